@@ -1,0 +1,1 @@
+//! One-electron integrals, and two- and three-centre Coulomb integrals.

@@ -1,0 +1,1 @@
+//! Ionization energies from orbitals.

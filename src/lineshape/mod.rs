@@ -1,0 +1,1 @@
+//! Area-normalised line shapes with their derivatives.

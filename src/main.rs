@@ -1,0 +1,3 @@
+//! The `bandproof` program.
+
+fn main() {}

@@ -1,0 +1,1 @@
+//! What orbitals are made of: populations and character.

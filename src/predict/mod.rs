@@ -1,0 +1,1 @@
+//! Sticks × shape ⊗ instrument → predicted trace. Knows no molecule.

@@ -1,0 +1,1 @@
+//! Figures, tables and pages, drawn from the dossier; nothing is computed while drawing.

@@ -1,0 +1,1 @@
+//! Resolves what the user asked for and runs it.

@@ -1,0 +1,14 @@
+//! Integration tests: one binary, one module per subject.
+
+mod assignment;
+mod bad_input;
+mod commands;
+mod common_practice;
+mod demo;
+mod engine;
+mod fitting;
+mod layers;
+mod measured;
+mod reporting;
+mod shapes;
+mod traces;
