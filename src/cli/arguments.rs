@@ -1,7 +1,8 @@
 //! Commands and options, with the help a chemist reads.
 
-use crate::study::request::{ColumnName, LevelName};
-use clap::{Args, Parser, Subcommand, ValueEnum};
+use crate::study::request::{AxisName, LevelName};
+use crate::trace::Choice;
+use clap::{Args, Parser, Subcommand};
 use std::path::PathBuf;
 
 /// Assigns the bands of a gas-phase valence photoelectron spectrum to molecular orbitals.
@@ -68,20 +69,20 @@ pub struct ComputeArguments {
 #[derive(Debug, Args)]
 pub struct ReadArguments {
     /// What the axis holds [default: what the file says, else ionization energy]
-    #[arg(long, value_enum)]
-    pub axis: Option<AxisArgument>,
+    #[arg(long, value_name = "ionization|kinetic|flight-time")]
+    pub axis: Option<AxisName>,
     /// Photon energy, eV (He I α is 21.218)
     #[arg(long, value_name = "EV")]
     pub photon_energy: Option<f64>,
     /// Column of the axis, by name or by number from 1
     #[arg(long, value_name = "COLUMN", value_parser = column)]
-    pub energy_column: Option<ColumnName>,
+    pub energy_column: Option<Choice>,
     /// Column of the counts, by name or by number from 1
     #[arg(long, value_name = "COLUMN", value_parser = column)]
-    pub counts_column: Option<ColumnName>,
+    pub counts_column: Option<Choice>,
     /// Column of the standard deviations, by name or by number from 1
     #[arg(long, value_name = "COLUMN", value_parser = column)]
-    pub sd_column: Option<ColumnName>,
+    pub sd_column: Option<Choice>,
     /// Ionization energies to use, eV
     #[arg(long, num_args = 2, value_names = ["LOW", "HIGH"])]
     pub window: Option<Vec<f64>>,
@@ -97,17 +98,6 @@ pub struct ReadArguments {
     /// Retarding potential, V
     #[arg(long, value_name = "V", allow_hyphen_values = true)]
     pub retarding: Option<f64>,
-}
-
-/// Kinds of axis.
-#[derive(Debug, Clone, Copy, ValueEnum)]
-pub enum AxisArgument {
-    /// Ionization (binding) energy, eV
-    Ionization,
-    /// Kinetic energy, eV; needs the photon energy
-    Kinetic,
-    /// Flight time, ns; needs photon energy, flight length and time zero
-    FlightTime,
 }
 
 /// `assign`.
@@ -243,10 +233,9 @@ pub struct BeginArguments {
     pub overwrite: bool,
 }
 
-fn column(text: &str) -> Result<ColumnName, String> {
-    match text.parse::<usize>() {
-        Ok(0) => Err("columns count from 1".to_owned()),
-        Ok(number) => Ok(ColumnName::Number(number)),
-        Err(_) => Ok(ColumnName::Name(text.to_owned())),
+fn column(text: &str) -> Result<Choice, String> {
+    match text.parse().expect("any text is a name") {
+        Choice::Number(0) => Err("columns count from 1".to_owned()),
+        choice => Ok(choice),
     }
 }

@@ -5,7 +5,8 @@
 //! other key by key; see [`StudyRequest::layered`].
 
 use crate::levels::Method;
-use crate::trace::Axis;
+use crate::report::Direction;
+use crate::trace::{Choice, DecimalMark, Delimiter};
 use serde::{Deserialize, Serialize};
 use std::path::PathBuf;
 
@@ -55,11 +56,15 @@ pub struct TraceRequest {
     /// Photon energy, eV.
     pub photon_energy_ev: Option<Positive>,
     /// Column of the axis: a name or a number from 1.
-    pub energy_column: Option<ColumnName>,
+    pub energy_column: Option<Choice>,
     /// Column of the counts.
-    pub counts_column: Option<ColumnName>,
+    pub counts_column: Option<Choice>,
     /// Column of the standard deviations.
-    pub sd_column: Option<ColumnName>,
+    pub sd_column: Option<Choice>,
+    /// What parts the columns, where the text leaves it open.
+    pub delimiter: Option<Delimiter>,
+    /// The decimal mark, where the text leaves it open.
+    pub decimal: Option<DecimalMark>,
     /// Ionization energies to use, eV.
     pub window_ev: Option<Window>,
     /// Standard deviation of the energy scale's offset, eV.
@@ -114,37 +119,6 @@ pub enum AxisName {
     Kinetic,
     /// Flight time.
     FlightTime,
-}
-
-impl From<Axis> for AxisName {
-    fn from(axis: Axis) -> Self {
-        match axis {
-            Axis::Ionization => AxisName::Ionization,
-            Axis::Kinetic => AxisName::Kinetic,
-            Axis::FlightTime { .. } => AxisName::FlightTime,
-        }
-    }
-}
-
-/// Which way the energy axis of a figure runs.
-#[derive(Debug, Clone, Copy, Default, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(rename_all = "lowercase")]
-pub enum Direction {
-    /// Ionization energy rises from left to right.
-    #[default]
-    Rising,
-    /// Ionization energy falls from left to right.
-    Falling,
-}
-
-/// A column by name or by number from 1.
-#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(untagged)]
-pub enum ColumnName {
-    /// Number from 1.
-    Number(usize),
-    /// Header word, case ignored.
-    Name(String),
 }
 
 /// A number that is finite and above zero.

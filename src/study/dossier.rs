@@ -1,0 +1,148 @@
+//! Fills the dossier: everything that the outputs show is computed here or before.
+
+use super::assigning::Measured;
+use super::compute::PROGRAM;
+use super::settings::Settings;
+use crate::assign::Assignment;
+use crate::fit::Grouping;
+use crate::levels::{Levels, LineKind};
+use crate::report::{
+    AssignmentSummary, BandCurve, Dossier, FitSummary, GroupingOdds, Overlay, OverlayStick, SCHEMA,
+    TraceSummary,
+};
+use crate::trace::{Axis, Trace};
+
+/// Puts a finished study on record.
+pub(super) fn fill(
+    settings: &Settings,
+    measured: Measured,
+    levels: Levels,
+    assignment: Assignment,
+) -> Dossier {
+    let grouping = &measured.fit.groupings[assignment.grouping];
+    let mut overlay = measured_overlay(&measured, grouping);
+    overlay.direction = settings.direction;
+    overlay.sticks = sticks(&levels, &assignment);
+    let study = match serde_json::to_value(settings) {
+        Ok(serde_json::Value::Object(map)) => map,
+        other => unreachable!("settings are a plain struct, not {other:?}"),
+    };
+    Dossier {
+        schema: SCHEMA.to_owned(),
+        program: PROGRAM.to_owned(),
+        title: settings.name.clone(),
+        study,
+        trace: trace_summary(&measured.trace),
+        bands: grouping.bands.clone(),
+        fit: FitSummary {
+            groupings: (measured.fit.groupings.iter())
+                .map(|g| GroupingOdds {
+                    probability: g.probability,
+                    vertical_ev: g.bands.iter().map(|b| b.vertical_ev).collect(),
+                })
+                .collect(),
+            statistics: measured.fit.statistics,
+            peaks: measured.fit.peaks,
+            undetermined: measured.fit.undetermined,
+            correlations: measured.fit.correlations,
+        },
+        assignment: AssignmentSummary {
+            grouping: assignment.grouping,
+            grouping_probability: assignment.grouping_probability,
+            shift_ev: assignment.shift_ev,
+            shift_sd_ev: assignment.shift_sd_ev,
+            scale: assignment.scale,
+            unseen: assignment.unseen,
+        },
+        levels,
+        matches: assignment.matches,
+        remarks: assignment.remarks,
+        overlay,
+    }
+}
+
+/// The measured part of a figure: points, fit, one curve per band, residuals.
+pub(super) fn measured_overlay(measured: &Measured, grouping: &Grouping) -> Overlay {
+    let Measured { trace, fit } = measured;
+    // Intensity is counts per eV. On a scanned axis all channels have one exposure and the
+    // counts themselves are what the chemist knows.
+    let (unit, factor) = match trace.axis {
+        Axis::FlightTime { .. } => ("counts per eV", 1.0),
+        Axis::Ionization | Axis::Kinetic => ("counts", trace.exposure_ev[0]),
+    };
+    let shown = |intensity: &[f64]| intensity.iter().map(|y| y * factor).collect::<Vec<_>>();
+    let per_ev = |values: &[f64]| {
+        (values.iter().zip(&trace.exposure_ev))
+            .map(|(v, exposure)| v / exposure * factor)
+            .collect::<Vec<_>>()
+    };
+    let bands = (grouping.bands.iter())
+        .map(|band| {
+            let intensity = (trace.energy_ev.iter())
+                .map(|&energy| {
+                    let members = band.members.iter().map(|m| &fit.peaks[m.peak]);
+                    factor * members.map(|peak| peak.intensity(energy)).sum::<f64>()
+                })
+                .collect();
+            BandCurve {
+                band: band.id,
+                intensity,
+            }
+        })
+        .collect();
+    Overlay {
+        energy_ev: trace.energy_ev.clone(),
+        intensity: per_ev(&trace.counts),
+        intensity_sd: per_ev(&trace.sd),
+        unit: unit.to_owned(),
+        fit: shown(&fit.total),
+        background: shown(&fit.background),
+        bands,
+        residual: residuals(measured),
+        ..Overlay::default()
+    }
+}
+
+/// (Measured − fit) in standard deviations of the fitted counts where they are Poisson, else of
+/// the stated ones.
+fn residuals(measured: &Measured) -> Vec<f64> {
+    let Measured { trace, fit } = measured;
+    (0..trace.len())
+        .map(|i| {
+            let expected = fit.total[i] * trace.exposure_ev[i];
+            let sd = match trace.noise {
+                crate::trace::Noise::Poisson => crate::trace::poisson_sd(expected),
+                crate::trace::Noise::Stated => trace.sd[i],
+            };
+            (trace.counts[i] - expected) / sd
+        })
+        .collect()
+}
+
+fn sticks(levels: &Levels, assignment: &Assignment) -> Vec<OverlayStick> {
+    (levels.hole_states.iter())
+        .filter(|state| state.kind == LineKind::Main)
+        .map(|state| OverlayStick {
+            label: state.label.clone(),
+            computed_ev: state.ionization_energy_ev,
+            shifted_ev: assignment.scale * state.ionization_energy_ev + assignment.shift_ev,
+            height: state.pole_strength * state.degeneracy as f64,
+            band: (assignment.matches.iter())
+                .find(|m| m.hole_states.contains(&state.label))
+                .map(|m| m.band),
+            verdict: state.character.verdict,
+        })
+        .collect()
+}
+
+pub(super) fn trace_summary(trace: &Trace) -> TraceSummary {
+    TraceSummary {
+        source: trace.source.clone(),
+        channels: trace.len(),
+        span_ev: trace.span_ev(),
+        photon_energy_ev: trace.photon_energy_ev,
+        axis: trace.axis,
+        noise: trace.noise,
+        comments: trace.comments.clone(),
+    }
+}
