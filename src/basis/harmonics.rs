@@ -7,7 +7,7 @@
 //! Formula: T. Helgaker, P. Jørgensen, J. Olsen, Molecular Electronic-Structure Theory, section
 //! 6.4 (memory), times √((2l+1)/4π) for the normalisation used here.
 
-use nalgebra::DMatrix;
+use nalgebra::{DMatrix, DVector, Matrix3, Vector3};
 use std::f64::consts::PI;
 
 /// Exponents (i, j, k) of x^i y^j z^k for one l: i falls first, then j: `xx, xy, xz, yy, yz, zz`.
@@ -70,6 +70,46 @@ pub fn solid_harmonics(l: usize) -> DMatrix<f64> {
         }
     }
     matrix
+}
+
+/// Value of every S_lm at a point, m from −l to +l.
+pub fn solid_harmonic_values(l: usize, point: &Vector3<f64>) -> DVector<f64> {
+    let powers = cartesian_powers(l);
+    let power = |base: f64, n: usize| base.powi(n as i32);
+    let monomials = DVector::from_iterator(
+        powers.len(),
+        powers
+            .iter()
+            .map(|&[i, j, k]| power(point.x, i) * power(point.y, j) * power(point.z, k)),
+    );
+    solid_harmonics(l) * monomials
+}
+
+/// How the harmonics of one l mix when the axes are turned or mirrored: the matrix D with
+/// S_l(R·r) = D(R)·S_l(r), orthogonal for an orthogonal R.
+///
+/// D(R) = Σ over a point set of S_l(R·r)·S_l(r)ᵀ times the inverse of Σ S_l(r)·S_l(r)ᵀ; exact, since
+/// the harmonics of one l are closed under R and the points (a spiral) determine them.
+pub fn turned_harmonics(l: usize, rotation: &Matrix3<f64>) -> DMatrix<f64> {
+    let size = 2 * l + 1;
+    let (mut mixed, mut gram) = (DMatrix::zeros(size, size), DMatrix::zeros(size, size));
+    let points = 4 * size;
+    for i in 0..points {
+        // Golden-angle spiral: even coverage of the sphere.
+        let z = 1.0 - (2 * i + 1) as f64 / points as f64;
+        let (sin, cos) = (i as f64 * PI * (3.0 - 5f64.sqrt())).sin_cos();
+        let ring = (1.0 - z * z).sqrt();
+        let point = Vector3::new(ring * cos, ring * sin, z);
+        let here = solid_harmonic_values(l, &point);
+        let there = solid_harmonic_values(l, &(rotation * point));
+        mixed += &there * here.transpose();
+        gram += &here * here.transpose();
+    }
+    let inverse = gram
+        .cholesky()
+        .expect("the spiral determines the harmonics")
+        .inverse();
+    mixed * inverse
 }
 
 fn factorial(n: usize) -> f64 {
@@ -179,6 +219,29 @@ mod tests {
             let gram = &matrix * moments * matrix.transpose();
             let error = (gram - DMatrix::identity(2 * l + 1, 2 * l + 1)).amax();
             assert!(error < 1e-12, "l = {l}: {error:e}");
+        }
+    }
+
+    #[test]
+    fn turning_twice_is_turning_by_the_product() {
+        let first = *nalgebra::Rotation3::from_euler_angles(0.4, -1.2, 2.2).matrix();
+        let second = *nalgebra::Rotation3::from_euler_angles(-0.9, 0.3, 0.7).matrix();
+        let mirror = Matrix3::from_diagonal(&Vector3::new(1.0, 1.0, -1.0));
+        for l in 0..=5 {
+            let one_by_one = turned_harmonics(l, &first) * turned_harmonics(l, &second);
+            let at_once = turned_harmonics(l, &(first * second));
+            assert!((&one_by_one - &at_once).amax() < 1e-12, "l = {l}");
+            let identity = DMatrix::identity(2 * l + 1, 2 * l + 1);
+            assert!(
+                (&at_once * at_once.transpose() - identity).amax() < 1e-12,
+                "l = {l}"
+            );
+            // A mirror through xy changes the sign where l + m is odd.
+            let signs = turned_harmonics(l, &mirror);
+            for row in 0..=2 * l {
+                let sign = if row % 2 == 0 { 1.0 } else { -1.0 };
+                assert!((signs[(row, row)] - sign).abs() < 1e-12);
+            }
         }
     }
 }

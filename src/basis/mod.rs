@@ -7,9 +7,11 @@
 
 mod data;
 pub mod harmonics;
+mod minimal;
 mod set;
 
 pub use data::{BUNDLED, canonical_name, correlation_auxiliary, default_auxiliary};
+pub use minimal::{MINIMAL_NAME, minimal_set};
 pub use set::{BasisSet, ElementBasis, RawShell, Role};
 
 use crate::molecule::{Molecule, symbol};

@@ -104,6 +104,11 @@ impl BasisSet {
         self.elements.get(&number)
     }
 
+    /// Replaces the shells of an element.
+    pub(super) fn set_element(&mut self, number: u8, shells: ElementBasis) {
+        self.elements.insert(number, shells);
+    }
+
     /// The elements that the set covers, as ranges: `H–Ar, Ca–Kr`.
     pub fn covered(&self) -> String {
         let mut runs: Vec<(u8, u8)> = Vec::new();
