@@ -1,4 +1,18 @@
 //! Elements, geometries and the XYZ reader.
+//!
+//! Positions are bohr inside and Å in files. A [`Molecule`] made by [`Molecule::from_xyz`] or
+//! [`Molecule::read`] is known to be sound: supported elements, finite positions, no two atoms on
+//! top of each other, and a multiplicity that its electrons can have.
+
+mod elements;
+mod geometry;
+mod xyz;
+
+pub use elements::{
+    LAST_SUPPORTED, core_orbitals, covalent_radius_angstrom, number_of_symbol, symbol,
+};
+pub use geometry::{BOND_FACTOR, BondedPair};
+pub use xyz::{CLOSEST_ANGSTROM, FARTHEST_ANGSTROM, GeometryError};
 
 use nalgebra::Vector3;
 
@@ -22,4 +36,11 @@ pub struct Atom {
     pub number: u8,
     /// Position, bohr.
     pub position_bohr: Vector3<f64>,
+}
+
+impl Atom {
+    /// Element symbol.
+    pub fn symbol(&self) -> &'static str {
+        symbol(self.number).unwrap_or("?")
+    }
 }
