@@ -133,7 +133,9 @@ fn character(
             share,
         })
         .collect();
-    atoms.sort_by(|a, b| b.share.total_cmp(&a.share));
+    // Equal members keep the order of the file: rounding noise must not decide.
+    let rank = |value: f64| (value.abs() * 1e6).round();
+    atoms.sort_by(|a, b| rank(b.share).total_cmp(&rank(a.share)));
     let mut bonds: Vec<BondShare> = evidence
         .bonds
         .iter()
@@ -143,11 +145,7 @@ fn character(
             overlap_population: bond.overlap_population,
         })
         .collect();
-    bonds.sort_by(|a, b| {
-        b.overlap_population
-            .abs()
-            .total_cmp(&a.overlap_population.abs())
-    });
+    bonds.sort_by(|a, b| rank(b.overlap_population).total_cmp(&rank(a.overlap_population)));
     Character {
         verdict,
         description: words::describe(molecule, frame, evidence, verdict, below_homo),
