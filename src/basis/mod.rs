@@ -6,7 +6,6 @@
 //! All functions are spherical, also the d functions of 6-31G*.
 
 mod data;
-pub mod harmonics;
 mod minimal;
 mod set;
 

@@ -1,5 +1,9 @@
 //! Density-fitted self-consistent field.
 
+mod degeneracy;
+
+pub use degeneracy::DEGENERACY_TOLERANCE_HARTREE;
+
 use nalgebra::{DMatrix, DVector};
 
 /// Molecular orbitals of one spin (or of both, in a closed shell).
