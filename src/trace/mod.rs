@@ -3,8 +3,32 @@
 //! Counts stay as they were recorded; only the axis is converted. `exposure` carries what the
 //! conversion does to a channel, so Poisson statistics stay with the raw counts: the counts
 //! expected in channel i are `exposure[i] × intensity(energy[i])`.
+//!
+//! A file passes three rooms. Each format has a reader of its own that knows its syntax and
+//! nothing of spectra, and hands over a raw [`Record`]: numbers as they stand, with the line
+//! each came from and whatever the file states about them. The `axis` room alone turns records
+//! into ionization energies. [`Trace`] is what everyone else sees. A new format is a new reader.
+//!
+//! What the readers accept, and what they refuse and why, stands in `docs/traces.md`.
+
+mod axis;
+mod delimited;
+mod error;
+mod options;
+mod record;
+mod regroup;
+
+use std::path::Path;
 
 use serde::{Deserialize, Serialize};
+
+pub use delimited::write_delimited;
+pub use error::{Problem, TraceError};
+pub use options::{Choice, DecimalMark, Delimiter, ReadOptions};
+pub use record::Record;
+
+/// Fewest channels that make a trace: below this no band can be told from its background.
+pub const MIN_CHANNELS: usize = 8;
 
 /// A measured spectrum. All vectors have one entry per channel.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
@@ -29,6 +53,10 @@ pub struct Trace {
     pub axis: Axis,
     /// Comment lines of the file, without their marks.
     pub comments: Vec<String>,
+    /// What the reader decided or noticed on the way, in sentences: a guessed axis, channels
+    /// left out, counts that do not look like counts.
+    #[serde(default)]
+    pub notes: Vec<String>,
 }
 
 /// How the standard deviations of the counts are known.
@@ -49,6 +77,8 @@ pub enum Axis {
     Ionization,
     /// Kinetic energy of the electrons, eV; needs the photon energy.
     Kinetic,
+    /// Ionization (binding) energy as a wavenumber, cm⁻¹.
+    Wavenumber,
     /// Flight time: E_kin = ½·m·(L/(t − t0))² + retarding potential.
     FlightTime {
         /// Flight length, metres.
@@ -56,8 +86,21 @@ pub enum Axis {
         /// Time zero, nanoseconds.
         time_zero_ns: f64,
         /// Retarding potential that the electrons climbed before the drift, volts.
+        #[serde(default)]
         retarding_v: f64,
     },
+}
+
+impl Axis {
+    /// The name used in files and messages.
+    pub fn name(&self) -> &'static str {
+        match self {
+            Axis::Ionization => "ionization",
+            Axis::Kinetic => "kinetic",
+            Axis::Wavenumber => "wavenumber",
+            Axis::FlightTime { .. } => "flight-time",
+        }
+    }
 }
 
 impl Trace {
@@ -75,4 +118,74 @@ impl Trace {
     pub fn span_ev(&self) -> [f64; 2] {
         [self.energy_ev[0], self.energy_ev[self.len() - 1]]
     }
+
+    /// Sum of all counts.
+    pub fn total_counts(&self) -> f64 {
+        self.counts.iter().sum()
+    }
+
+    /// Whether every entry is a whole number that is not negative, as raw counts are. Normalised,
+    /// smoothed, averaged or background-subtracted traces fail this.
+    pub fn looks_like_counts(&self) -> bool {
+        self.counts.iter().all(|&c| c >= 0.0 && c.fract() == 0.0)
+    }
+}
+
+/// Standard deviation of a raw count: its square root, and 1 where nothing was counted.
+pub fn poisson_sd(count: f64) -> f64 {
+    count.max(1.0).sqrt()
+}
+
+/// Reads the trace in the file at `path`.
+///
+/// # Errors
+/// [`TraceError`] with file, line and column, what was found and what was expected.
+pub fn read(path: &Path, options: &ReadOptions) -> Result<Trace, TraceError> {
+    let source = path.display().to_string();
+    let bytes = std::fs::read(path)
+        .map_err(|e| TraceError::file(&source, Problem::Unreadable(e.to_string())))?;
+    from_bytes(&bytes, &source, options)
+}
+
+/// Reads a trace from the bytes of a file; `source` is the name used in messages.
+///
+/// Text is UTF-8, with or without a byte-order mark. Other eight-bit text is read as Latin-1,
+/// with a note: numbers are the same in both, comments nearly always.
+///
+/// # Errors
+/// As [`read`].
+pub fn from_bytes(bytes: &[u8], source: &str, options: &ReadOptions) -> Result<Trace, TraceError> {
+    if bytes.starts_with(&[0xFF, 0xFE]) || bytes.starts_with(&[0xFE, 0xFF]) {
+        return Err(TraceError::file(source, Problem::Utf16));
+    }
+    if let Some(at) = bytes.iter().position(|&b| b == 0) {
+        return Err(TraceError::file(source, Problem::Binary { byte: at + 1 }));
+    }
+    match std::str::from_utf8(bytes) {
+        Ok(text) => from_text(text, source, options),
+        Err(bad) => {
+            let line = bytes[..bad.valid_up_to()]
+                .iter()
+                .filter(|&&b| b == b'\n')
+                .count()
+                + 1;
+            let text: String = bytes.iter().map(|&b| char::from(b)).collect();
+            let mut trace = from_text(&text, source, options)?;
+            trace.notes.push(format!(
+                "line {line} is not UTF-8: the file was read as Latin-1"
+            ));
+            Ok(trace)
+        }
+    }
+}
+
+/// Reads a trace from text; `source` is the name used in messages.
+///
+/// # Errors
+/// As [`read`].
+pub fn from_text(text: &str, source: &str, options: &ReadOptions) -> Result<Trace, TraceError> {
+    let text = text.strip_prefix('\u{feff}').unwrap_or(text);
+    let text = text.trim_end_matches('\u{1a}');
+    let record = delimited::read(text, source, options)?;
+    axis::to_trace(record, source, options)
 }
