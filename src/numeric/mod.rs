@@ -1,5 +1,7 @@
 //! Numerical methods that know nothing of molecules or spectra.
 
 pub mod boys;
+pub mod faddeeva;
 pub mod lanes;
 pub mod linalg;
+pub mod statistics;
