@@ -1,1 +1,4 @@
 //! Numerical methods that know nothing of molecules or spectra.
+
+pub mod faddeeva;
+pub mod statistics;
