@@ -1,5 +1,7 @@
 //! Reads bands out of a trace: finds them, fits them, groups resolved members into bands.
 
+pub mod solver;
+
 use serde::{Deserialize, Serialize};
 
 /// Everything that a fit says about a trace.
