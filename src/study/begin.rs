@@ -3,7 +3,7 @@
 use super::settings::SCALE_OFFSET_SD_EV;
 use crate::molecule::Molecule;
 use crate::trace::{Axis, Trace};
-use std::path::Path;
+use std::path::{Component, Path, PathBuf};
 
 /// The text of a study file. `geometry` and `file` are written as given.
 pub fn study_text(geometry: &Path, molecule: &Molecule, file: &Path, trace: &Trace) -> String {
@@ -64,4 +64,37 @@ file = {file}
         multiplicity = molecule.multiplicity,
         file = quoted(file),
     )
+}
+
+/// `path` as seen from `folder`, both relative to here or both absolute. Where no relative form
+/// exists, the absolute one.
+pub fn relative_to(path: &Path, folder: &Path) -> PathBuf {
+    if folder.as_os_str().is_empty() || path.is_absolute() {
+        return path.to_owned();
+    }
+    let plain = |p: &Path| p.components().all(|c| matches!(c, Component::Normal(_)));
+    if !plain(folder) || !plain(path) {
+        return std::path::absolute(path).unwrap_or_else(|_| path.to_owned());
+    }
+    match path.strip_prefix(folder) {
+        Ok(inside) => inside.to_owned(),
+        Err(_) => {
+            let up: PathBuf = folder.components().map(|_| "..").collect();
+            up.join(path)
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn paths_are_seen_from_the_study() {
+        let seen = |path: &str, folder: &str| relative_to(Path::new(path), Path::new(folder));
+        assert_eq!(seen("a/m.xyz", ""), Path::new("a/m.xyz"));
+        assert_eq!(seen("a/m.xyz", "a"), Path::new("m.xyz"));
+        assert_eq!(seen("m.xyz", "a/b"), Path::new("../../m.xyz"));
+        assert!(seen("../m.xyz", "a").is_absolute());
+    }
 }

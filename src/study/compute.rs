@@ -4,7 +4,7 @@ use super::settings::TheorySettings;
 use super::{Event, Observer, StudyError};
 use crate::basis::{Basis, BasisSet};
 use crate::levels::{
-    AtomLine, Level, Levels, Method, MoleculeSummary, OrbitalLine, SCHEMA, ScfSummary,
+    AtomLine, Level, Levels, Method, MoleculeSummary, SCHEMA, ScfSummary,
 };
 use crate::molecule::Molecule;
 use crate::scf::{self, ScfOptions};
@@ -52,5 +52,54 @@ pub fn levels_of(
         },
     )?;
     observer(&Event::Stage("character of the orbitals"));
-    todo_replace(molecule, basis, auxiliary, mean_field, settings)
+    let overlap = integrals::overlap(&basis);
+    let characters = (mean_field.orbitals.by_spin().into_iter())
+        .map(|(_, set)| orbitals::characters(molecule, &basis, &overlap, set))
+        .collect::<Result<Vec<_>, _>>()?;
+    let core = molecule.core_orbital_count();
+    Ok(Levels {
+        schema: SCHEMA.to_owned(),
+        program: PROGRAM.to_owned(),
+        molecule: summary(molecule),
+        level: Level {
+            method: settings.level.method,
+            basis: basis.name.clone(),
+            auxiliary: auxiliary.name.clone(),
+            frozen_core: false,
+        },
+        scf: ScfSummary {
+            energy_hartree: mean_field.energy_hartree,
+            nuclear_repulsion_hartree: mean_field.nuclear_repulsion_hartree,
+            iterations: mean_field.iterations,
+            converged: true,
+            dipole_debye: mean_field.dipole_debye,
+        },
+        orbitals: ionization::orbital_lines(&mean_field.orbitals, core, &characters, EMPTY_SHOWN),
+        hole_states: match settings.level.method {
+            Method::Koopmans => ionization::koopmans(&mean_field.orbitals, core, &characters)?,
+        },
+    })
+}
+
+/// Empty orbitals listed beside the occupied ones.
+const EMPTY_SHOWN: usize = 3;
+
+fn summary(molecule: &Molecule) -> MoleculeSummary {
+    let atoms = (molecule.atoms.iter())
+        .zip(molecule.positions_angstrom())
+        .map(|(atom, position)| AtomLine {
+            element: atom.symbol().to_owned(),
+            x: position.x,
+            y: position.y,
+            z: position.z,
+        })
+        .collect();
+    MoleculeSummary {
+        name: molecule.name.clone(),
+        formula: molecule.formula(),
+        charge: molecule.charge,
+        multiplicity: molecule.multiplicity,
+        point_group: None,
+        atoms,
+    }
 }

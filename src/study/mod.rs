@@ -9,6 +9,7 @@ pub mod compute;
 pub mod dossier;
 pub mod request;
 pub mod settings;
+pub mod simulating;
 
 use crate::assign::AssignError;
 use crate::basis::BasisError;

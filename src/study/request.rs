@@ -121,6 +121,28 @@ pub enum AxisName {
     FlightTime,
 }
 
+impl AxisName {
+    /// The word.
+    pub fn name(self) -> &'static str {
+        match self {
+            AxisName::Ionization => "ionization",
+            AxisName::Kinetic => "kinetic",
+            AxisName::FlightTime => "flight-time",
+        }
+    }
+}
+
+impl std::str::FromStr for AxisName {
+    type Err = String;
+
+    fn from_str(text: &str) -> Result<Self, String> {
+        [Self::Ionization, Self::Kinetic, Self::FlightTime]
+            .into_iter()
+            .find(|axis| axis.name() == text)
+            .ok_or_else(|| format!("found '{text}', expected ionization, kinetic or flight-time"))
+    }
+}
+
 /// A number that is finite and above zero.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
 #[serde(try_from = "f64", into = "f64")]
