@@ -2,7 +2,7 @@
 
 use super::build::{Builder, sort};
 use super::channels::Channels;
-use super::grouping::{Features, group};
+use super::describe::{Fitted, groupings};
 use super::model::{Line, Model, PER_LINE, Parameters, Selection};
 use super::solver::{Covariance, Solution, SolverOptions, StopReason, minimize};
 use super::{BandFit, CorrelatedPair, FitError, FitOptions, FitStatistics, FitStep, Peak, Stage};
@@ -59,16 +59,14 @@ pub fn fit_bands(
         .enumerate()
         .map(|(k, line)| describe(line, &solution, first + PER_LINE * k, significance[k]))
         .collect();
-    let groupings = group(
-        &Features {
-            peaks: &peaks,
-            covariance: &solution.covariance,
-            first,
-            parameters: &parameters,
-            data: &data,
-        },
-        options,
-    );
+    let fitted = Fitted {
+        data: &data,
+        parameters: &parameters,
+        peaks: &peaks,
+        covariance: &solution.covariance,
+        price: builder.price,
+    };
+    let groupings = groupings(&fitted, options);
     (builder.observer)(&FitStep {
         stage: Stage::Grouped,
         lines: peaks.len(),

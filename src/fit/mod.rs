@@ -12,8 +12,10 @@ mod background;
 mod bands;
 mod build;
 mod channels;
+mod describe;
 mod grouping;
 mod model;
+mod modes;
 mod scan;
 pub mod solver;
 
