@@ -29,7 +29,12 @@ impl Background {
     }
 
     /// Value at an energy, and the derivatives by the parameters where wanted.
-    pub fn evaluate(&self, energy: f64, parameters: &[f64], derivatives: Option<&mut [f64]>) -> f64 {
+    pub fn evaluate(
+        &self,
+        energy: f64,
+        parameters: &[f64],
+        derivatives: Option<&mut [f64]>,
+    ) -> f64 {
         let t = (energy - self.low) / (self.high - self.low);
         let terms = bernstein(self.degree, t);
         let mut value = 0.0;
@@ -62,7 +67,11 @@ impl Background {
             .map(|k| {
                 let w = k as f64 / (n + 1) as f64;
                 let left = if k > 0 { w * parameters[k - 1] } else { 0.0 };
-                let right = if k <= n { (1.0 - w) * parameters[k] } else { 0.0 };
+                let right = if k <= n {
+                    (1.0 - w) * parameters[k]
+                } else {
+                    0.0
+                };
                 left + right
             })
             .collect();
@@ -126,7 +135,10 @@ mod tests {
         let low = cubic();
         let p = [3.0, 0.5, 2.0, 7.0, 4.0, 0.8];
         let raised = low.raise(&p);
-        let high = Background { degree: 4, ..low.clone() };
+        let high = Background {
+            degree: 4,
+            ..low.clone()
+        };
         for e in [8.0, 8.7, 10.0, 12.0] {
             let difference = low.evaluate(e, &p, None) - high.evaluate(e, &raised, None);
             assert!(difference.abs() < 1e-13);

@@ -44,15 +44,14 @@ impl Line {
         self.shape().fwhm()
     }
 
-    /// Intensity at an energy, counts per eV.
-    pub fn intensity(&self, energy: f64) -> f64 {
-        self.area * self.shape().value(energy - self.position)
-    }
-
     /// How far its counts matter: the Gaussian core to 10⁻¹⁰ of the top, a Lorentzian wing to
     /// about 10⁻⁵, and a margin for the line to move within one run of the solver.
     pub fn reach(&self) -> f64 {
-        let wing = if self.voigt { 150.0 * self.ratio * self.gaussian } else { 0.0 };
+        let wing = if self.voigt {
+            150.0 * self.ratio * self.gaussian
+        } else {
+            0.0
+        };
         4.5 * self.gaussian + wing
     }
 }
@@ -102,6 +101,11 @@ impl Parameters {
         let expected = self.expected(data);
         (0..data.len()).map(|i| data.deviance(i, expected[i])).sum()
     }
+}
+
+/// Least Gaussian width at an energy: what the instrument and the channels can show, eV.
+pub(super) fn least_width(data: &Channels, energy: f64, narrowest: f64) -> f64 {
+    narrowest.max(1.5 * data.spacing(energy))
 }
 
 fn line_window(data: &Channels, line: &Line) -> Range<usize> {
@@ -165,14 +169,18 @@ impl<'a> Model<'a> {
         let mut polynomial = None;
         if !selection.background {
             for i in range.clone() {
-                let b = start.background.evaluate(data.energy[i], &start.coefficients, None);
+                let b = start
+                    .background
+                    .evaluate(data.energy[i], &start.coefficients, None);
                 fixed[i - range.start] += data.exposure[i] * b;
             }
         } else if start.background.tail.is_none() {
             let mut terms = vec![0.0; n * range.len()];
             let mut row = vec![0.0; n];
             for i in range.clone() {
-                start.background.evaluate(data.energy[i], &start.coefficients, Some(&mut row));
+                start
+                    .background
+                    .evaluate(data.energy[i], &start.coefficients, Some(&mut row));
                 for k in 0..n {
                     terms[k * range.len() + i - range.start] = data.exposure[i] * row[k];
                 }
@@ -260,8 +268,9 @@ impl<'a> Model<'a> {
                     (line.position - room).max(data.energy[0]),
                     (line.position + room).min(data.energy[data.len() - 1]),
                 );
-                let least = narrowest.max(1.2 * data.spacing(line.position)).min(line.gaussian);
-                push(least.max(line.gaussian / 3.0), (3.0 * line.gaussian).min(0.6 * span));
+                let least = least_width(data, line.position, narrowest);
+                let most = (3.0 * line.gaussian).min(0.6 * span).max(least);
+                push(least.max(line.gaussian / 3.0).min(most), most);
                 push(0.0, if line.voigt { HIGHEST_RATIO } else { 0.0 });
             } else {
                 push(line.position, line.position);
@@ -400,7 +409,11 @@ impl Objective for Model<'_> {
         let total = self.parameters();
         let mut columns = Columns {
             background: vec![0.0; nb * n],
-            lines: self.windows.iter().map(|w| vec![0.0; PER_LINE * w.len()]).collect(),
+            lines: self
+                .windows
+                .iter()
+                .map(|w| vec![0.0; PER_LINE * w.len()])
+                .collect(),
         };
         let expected = self.expand(vector, Some(&mut columns));
         // Everything in units of each channel's standard deviation.
@@ -455,8 +468,7 @@ fn normal_equations(
         }
         let mut other_row = first_row;
         for (other_window, other_columns) in &blocks[b..] {
-            let common =
-                window.start.max(other_window.start)..window.end.min(other_window.end);
+            let common = window.start.max(other_window.start)..window.end.min(other_window.end);
             if common.start < common.end {
                 for (i, left) in columns.iter().enumerate() {
                     let left = &left[common.start - window.start..common.end - window.start];
@@ -480,7 +492,12 @@ fn normal_equations(
 fn dot(a: &[f64], b: &[f64]) -> f64 {
     let mut lanes = [0.0; 4];
     let (a4, b4) = (a.chunks_exact(4), b.chunks_exact(4));
-    let rest: f64 = a4.remainder().iter().zip(b4.remainder()).map(|(x, y)| x * y).sum();
+    let rest: f64 = a4
+        .remainder()
+        .iter()
+        .zip(b4.remainder())
+        .map(|(x, y)| x * y)
+        .sum();
     for (x, y) in a4.zip(b4) {
         for k in 0..4 {
             lanes[k] += x[k] * y[k];

@@ -182,7 +182,9 @@ pub(super) fn blobs(data: &Channels, widths: &Widths, least: f64) -> Vec<Candida
         .map(|&fwhm| {
             let sd = fwhm / GAUSSIAN_FWHM_PER_SD;
             let variance = local_variance(data, &sums, sd);
-            Row::new(data, fwhm, |position| on_a_line(data, &variance, position, sd))
+            Row::new(data, fwhm, |position| {
+                on_a_line(data, &variance, position, sd)
+            })
         })
         .collect();
     maxima(&rows, least)

@@ -1,0 +1,317 @@
+//! Groups lines into bands, with odds.
+//!
+//! A line is one of three things: the first line of a new ionization, a further member of the
+//! vibrational progression of an earlier one, or a further component of a shape that one Voigt
+//! profile does not describe. Every reading of the whole trace gets a log score, the sum over its
+//! lines of log densities in position, area and width under the role that the line plays, and over
+//! its bands of the probability that the next member, which such an envelope leads one to expect,
+//! stays below the noise. Readings are built line by line in order of energy and the best
+//! [`BEAM`] kept.
+//!
+//! The densities are broad and stated as constants below. They say: valence ionizations lie about
+//! 1.4 eV apart; vibrational spacings lie between 0.03 and 0.55 eV (those of hydrogen stretches);
+//! members are evenly spaced to a few per cent, equally wide, and their intensities follow
+//! Poisson's law (displaced harmonic oscillators) within a factor of two; bands are more often
+//! steep on the low-energy side. These are common practice of the trade, no source.
+
+use super::modes::{Member, Progression};
+use crate::numeric::statistics::{ln_normal, log_sum_exp, normal_cdf};
+
+/// Readings kept while lines are added.
+const BEAM: usize = 400;
+
+/// Ionizations per eV of a valence spectrum.
+const IONIZATIONS_PER_EV: f64 = 0.7;
+
+/// Density of a new ionization's first line in ln area and ln width: anything within a few
+/// factors of e.
+const LN_AREA_DENSITY: f64 = 0.2;
+const LN_WIDTH_DENSITY: f64 = 0.35;
+
+/// Probability that a band's shape takes one more component.
+const COMPONENT: f64 = 0.5;
+
+/// Probability that a visible next member is missing all the same.
+const VANISHED: f64 = 0.02;
+
+/// A line as the grouping sees it.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct LineView {
+    pub position: f64,
+    pub position_sd: f64,
+    pub area: f64,
+    pub area_sd: f64,
+    pub width: f64,
+    pub width_sd: f64,
+}
+
+/// Lines that are one band, and how they hang together.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) struct Group {
+    pub lines: Vec<usize>,
+    pub progression: Progression,
+}
+
+/// A reading of all lines so far.
+#[derive(Debug, Clone)]
+struct Reading {
+    groups: Vec<Group>,
+    score: f64,
+}
+
+/// A reading of all lines, with its probability.
+#[derive(Debug, Clone)]
+pub(super) struct Scored {
+    pub groups: Vec<Group>,
+    pub probability: f64,
+}
+
+/// Readings of `lines` (by rising position) as bands, most probable first, at most `most`.
+/// `visible(energy, width)` is the area that a line there needs to be seen.
+pub(super) fn readings(
+    lines: &[LineView],
+    visible: &dyn Fn(f64, f64) -> f64,
+    most: usize,
+) -> Vec<Scored> {
+    let mut beam = vec![Reading {
+        groups: Vec::new(),
+        score: 0.0,
+    }];
+    for k in 0..lines.len() {
+        let mut next: Vec<Reading> = beam.iter().flat_map(|r| grow(r, k, lines)).collect();
+        // Ties are broken by the order in which readings arise, which is fixed.
+        next.sort_by(|a, b| b.score.total_cmp(&a.score));
+        next.truncate(BEAM);
+        beam = next;
+    }
+    for reading in &mut beam {
+        for group in &reading.groups {
+            reading.score += ended(group, lines, visible);
+        }
+    }
+    // Different roles of the lines within the same bands are one reading.
+    let mut distinct: Vec<(Vec<Vec<usize>>, Reading, Vec<f64>)> = Vec::new();
+    for reading in beam {
+        let mut partition: Vec<Vec<usize>> =
+            reading.groups.iter().map(|g| g.lines.clone()).collect();
+        partition.sort();
+        match distinct.iter_mut().find(|d| d.0 == partition) {
+            Some(same) => {
+                same.2.push(reading.score);
+                if reading.score > same.1.score {
+                    same.1 = reading;
+                }
+            }
+            None => {
+                let score = reading.score;
+                distinct.push((partition, reading, vec![score]));
+            }
+        }
+    }
+    let mut scored: Vec<(f64, Reading)> = distinct
+        .into_iter()
+        .map(|(_, reading, scores)| (log_sum_exp(&scores), reading))
+        .collect();
+    scored.sort_by(|a, b| b.0.total_cmp(&a.0));
+    scored.truncate(most);
+    let logs: Vec<f64> = scored.iter().map(|s| s.0).collect();
+    let all = log_sum_exp(&logs);
+    scored
+        .into_iter()
+        .map(|(log, reading)| Scored {
+            groups: reading.groups,
+            probability: (log - all).exp(),
+        })
+        .collect()
+}
+
+/// All ways to give line `k` a place in a reading.
+fn grow(reading: &Reading, k: usize, lines: &[LineView]) -> Vec<Reading> {
+    let line = &lines[k];
+    let mut grown = Vec::new();
+    let mut fresh = reading.clone();
+    fresh.groups.push(Group {
+        lines: vec![k],
+        progression: Progression::new(Member::new(k, line)),
+    });
+    fresh.score += (IONIZATIONS_PER_EV * LN_AREA_DENSITY * LN_WIDTH_DENSITY).ln();
+    grown.push(fresh);
+    for (g, group) in reading.groups.iter().enumerate() {
+        for (progression, density) in roles(group, k, lines) {
+            let mut next = reading.clone();
+            next.groups[g].lines.push(k);
+            next.groups[g].progression = progression;
+            next.score += density;
+            grown.push(next);
+        }
+    }
+    grown
+}
+
+/// The roles that line `k` can play in a group, each with its log density.
+fn roles(group: &Group, k: usize, lines: &[LineView]) -> Vec<(Progression, f64)> {
+    let line = &lines[k];
+    let mut roles = Vec::new();
+    if let Some((member, density)) = as_component(group, line, lines) {
+        let mut progression = group.progression.clone();
+        progression.members[member].absorb(k, line);
+        roles.push((progression, density));
+    }
+    roles.extend(group.progression.extended_by(k, line));
+    roles
+}
+
+/// Line as a component of an existing member's shape: which member, and the log density.
+fn as_component(group: &Group, line: &LineView, lines: &[LineView]) -> Option<(usize, f64)> {
+    let mut best: Option<(f64, usize, f64)> = None;
+    for (m, member) in group.progression.members.iter().enumerate() {
+        for &other in &member.lines {
+            let other = &lines[other];
+            let mean_width = 0.5 * (line.width + other.width);
+            let apart = (line.position - other.position).abs() / mean_width;
+            if apart > 1.3 || best.as_ref().is_some_and(|b| b.0 <= apart) {
+                continue;
+            }
+            let ln_area = (line.area / other.area).ln();
+            let ln_width = (line.width / other.width).ln();
+            // Density over energy: (1/mean width) × density over separation in widths.
+            let position = ln_normal(apart, 0.5, 0.3) - mean_width.ln();
+            // Down to a fiftieth of its neighbour, or up to as much more.
+            let area = if ln_area.abs() < 4.0 {
+                -(8.0_f64).ln()
+            } else {
+                -8.0
+            };
+            let width = ln_normal(ln_width, 0.0, 0.6);
+            // Steep towards low energy: the weaker component on the high side.
+            let side: f64 = if ln_area < 0.0 { 1.4 } else { 0.6 };
+            let density = COMPONENT.ln() + position + area + width + side.ln();
+            best = Some((apart, m, density));
+        }
+    }
+    best.map(|(_, m, density)| (m, density))
+}
+
+/// Log probability that a band shows no further member.
+fn ended(group: &Group, lines: &[LineView], visible: &dyn Fn(f64, f64) -> f64) -> f64 {
+    let progression = &group.progression;
+    if progression.members.len() < 2 {
+        // One member: about half of all bands do not show a second one.
+        return 0.5_f64.ln();
+    }
+    let width = lines[group.lines[0]].width;
+    let unseen = |position: f64, area: f64| {
+        let least = visible(position, width);
+        VANISHED + (1.0 - VANISHED) * normal_cdf((least / area).ln() / 0.8)
+    };
+    progression
+        .expected_next()
+        .into_iter()
+        .map(|(position, area)| unseen(position, area).ln())
+        .sum()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn line(position: f64, area: f64, width: f64) -> LineView {
+        LineView {
+            position,
+            position_sd: 0.003,
+            area,
+            area_sd: 0.03 * area,
+            width,
+            width_sd: 0.05 * width,
+        }
+    }
+
+    fn best(lines: &[LineView]) -> (Vec<Vec<usize>>, f64) {
+        let found = readings(lines, &|_, _| 50.0, 8);
+        let total: f64 = found.iter().map(|s| s.probability).sum();
+        assert!((total - 1.0).abs() < 1e-12);
+        let mut partition: Vec<Vec<usize>> =
+            found[0].groups.iter().map(|g| g.lines.clone()).collect();
+        partition.sort();
+        (partition, found[0].probability)
+    }
+
+    #[test]
+    fn far_apart_lines_are_bands_of_their_own() {
+        let (partition, p) = best(&[
+            line(9.0, 1000.0, 0.3),
+            line(10.3, 1200.0, 0.35),
+            line(12.9, 900.0, 0.4),
+        ]);
+        assert_eq!(partition, [vec![0], vec![1], vec![2]]);
+        assert!(p > 0.9, "{p}");
+    }
+
+    #[test]
+    fn a_regular_series_is_one_band() {
+        // Huang-Rhys factor 2, spacing 0.11 eV with a little anharmonicity.
+        let mut area = 1000.0;
+        let mut lines = Vec::new();
+        for v in 0..7 {
+            let n = v as f64;
+            lines.push(line(12.0 + 0.11 * n - 0.0005 * n * n, area, 0.06));
+            area *= 2.0 / (n + 1.0);
+        }
+        let (partition, p) = best(&lines);
+        assert_eq!(partition, [vec![0, 1, 2, 3, 4, 5, 6]]);
+        assert!(p > 0.9, "{p}");
+    }
+
+    #[test]
+    fn two_modes_on_a_strong_origin_are_one_band() {
+        let (partition, p) = best(&[
+            line(10.88, 5000.0, 0.03),
+            line(11.03, 500.0, 0.03),
+            line(11.077, 900.0, 0.03),
+        ]);
+        assert_eq!(partition, [vec![0, 1, 2]]);
+        assert!(p > 0.6, "{p}");
+    }
+
+    #[test]
+    fn a_sharp_line_on_a_broad_band_is_foreign_to_it() {
+        let (partition, p) = best(&[line(12.61, 300.0, 0.03), line(12.8, 9000.0, 0.8)]);
+        assert_eq!(partition, [vec![0], vec![1]]);
+        assert!(p > 0.9, "{p}");
+    }
+
+    #[test]
+    fn interleaved_progressions_are_told_apart() {
+        let mut lines = Vec::new();
+        let mut area = 2000.0;
+        for v in 0..5 {
+            lines.push(line(12.0 + 0.20 * v as f64, area, 0.04));
+            area *= 1.2 / (v + 1) as f64;
+        }
+        let mut area = 1500.0;
+        for v in 0..5 {
+            lines.push(line(12.53 + 0.13 * v as f64, area, 0.06));
+            area *= 1.5 / (v + 1) as f64;
+        }
+        lines.sort_by(|a, b| a.position.total_cmp(&b.position));
+        let found = readings(&lines, &|_, _| 30.0, 8);
+        let first: Vec<f64> = found[0]
+            .groups
+            .iter()
+            .map(|g| lines[g.lines[0]].position)
+            .collect();
+        assert_eq!(found[0].groups.len(), 2, "{:?}", found[0].groups);
+        assert_eq!(first, [12.0, 12.53]);
+    }
+
+    #[test]
+    fn an_overlap_of_two_similar_components_stays_open() {
+        let found = readings(
+            &[line(13.0, 5000.0, 0.4), line(13.35, 4000.0, 0.4)],
+            &|_, _| 50.0,
+            8,
+        );
+        assert!(found.len() >= 2);
+        assert!(found[0].probability < 0.95, "{}", found[0].probability);
+    }
+}
