@@ -32,7 +32,7 @@ pub enum GeometryError {
     },
     /// The bytes are not UTF-8.
     #[error(
-        "{file}, line {line}: found bytes that are not UTF-8 text; expected a plain-text XYZ file"
+        "{file}:{line}: found bytes that are not UTF-8 text; expected a plain-text XYZ file"
     )]
     NotText {
         /// File as the user gave it.
@@ -50,7 +50,7 @@ pub enum GeometryError {
     },
     /// The first line is not a positive whole number.
     #[error(
-        "{file}, line {line}: found '{found}'; expected the number of atoms, a whole number of at least 1"
+        "{file}:{line}: found '{found}'; expected the number of atoms, a whole number of at least 1"
     )]
     BadCount {
         /// File as the user gave it.
@@ -62,7 +62,7 @@ pub enum GeometryError {
     },
     /// The file ends before the promised number of atoms.
     #[error(
-        "{file}, line {line}: the file ends after {found} atom(s); line {count_line} promises {expected}"
+        "{file}:{line}: the file ends after {found} atom(s); line {count_line} promises {expected}"
     )]
     TooFewAtoms {
         /// File as the user gave it.
@@ -78,7 +78,7 @@ pub enum GeometryError {
     },
     /// There is more after the promised number of atoms.
     #[error(
-        "{file}, line {line}: found '{found}' after the {expected} atom(s) that line {count_line} promises; expected the end of the file (one geometry per file)"
+        "{file}:{line}: found '{found}' after the {expected} atom(s) that line {count_line} promises; expected the end of the file (one geometry per file)"
     )]
     TooManyAtoms {
         /// File as the user gave it.
@@ -94,7 +94,7 @@ pub enum GeometryError {
     },
     /// An atom line with fewer or more than four columns.
     #[error(
-        "{file}, line {line}: found {found} column(s) in '{text}'; expected 4: element, x, y, z (Å)"
+        "{file}:{line}: found {found} column(s) in '{text}'; expected 4: element, x, y, z (Å)"
     )]
     WrongColumns {
         /// File as the user gave it.
@@ -107,7 +107,7 @@ pub enum GeometryError {
         text: String,
     },
     /// Neither a symbol nor an atomic number.
-    #[error("{file}, line {line}: found '{found}'; expected an element symbol or atomic number")]
+    #[error("{file}:{line}: found '{found}'; expected an element symbol or atomic number")]
     UnknownElement {
         /// File as the user gave it.
         file: String,
@@ -118,7 +118,7 @@ pub enum GeometryError {
     },
     /// An element past krypton.
     #[error(
-        "{file}, line {line}: found {symbol} (element {number}); expected an element from H to Kr, the last with bundled basis sets"
+        "{file}:{line}: found {symbol} (element {number}); expected an element from H to Kr, the last with bundled basis sets"
     )]
     UnsupportedElement {
         /// File as the user gave it.
@@ -131,7 +131,7 @@ pub enum GeometryError {
         number: u8,
     },
     /// A coordinate that is not a number.
-    #[error("{file}, line {line}: found '{found}' for {axis}; expected a number in Å{hint}")]
+    #[error("{file}:{line}: found '{found}' for {axis}; expected a number in Å{hint}")]
     NotANumber {
         /// File as the user gave it.
         file: String,
@@ -146,7 +146,7 @@ pub enum GeometryError {
     },
     /// A coordinate that is NaN, infinite or absurdly large.
     #[error(
-        "{file}, line {line}: found '{found}' for {axis}; expected a finite number within ±{FARTHEST_ANGSTROM} Å"
+        "{file}:{line}: found '{found}' for {axis}; expected a finite number within ±{FARTHEST_ANGSTROM} Å"
     )]
     OutOfRange {
         /// File as the user gave it.
@@ -160,7 +160,7 @@ pub enum GeometryError {
     },
     /// Two atoms on top of each other.
     #[error(
-        "{file}, line {line}: this atom is {distance_angstrom:.3} Å from the one on line {other_line}; expected at least {CLOSEST_ANGSTROM} Å"
+        "{file}:{line}: this atom is {distance_angstrom:.3} Å from the one on line {other_line}; expected at least {CLOSEST_ANGSTROM} Å"
     )]
     TooClose {
         /// File as the user gave it.
@@ -542,7 +542,7 @@ mod tests {
         for (text, line, words) in located {
             let message = message(text);
             assert!(
-                message.starts_with(&format!("m.xyz, line {line}: ")),
+                message.starts_with(&format!("m.xyz:{line}: ")),
                 "{text:?}: {message}"
             );
             assert!(message.contains(words), "{text:?}: {message}");
@@ -591,7 +591,7 @@ mod tests {
         let binary = folder.path().join("bad.xyz");
         std::fs::write(&binary, b"1\n\nH 0 0 \xff\n").unwrap();
         let error = Molecule::read(&binary, 0, None).unwrap_err().to_string();
-        assert!(error.contains("bad.xyz, line 3: found bytes"), "{error}");
+        assert!(error.contains("bad.xyz:3: found bytes"), "{error}");
         let good = folder.path().join("argon.xyz");
         std::fs::write(&good, "1\n\nAr 0 0 0\n").unwrap();
         assert_eq!(Molecule::read(&good, 0, None).unwrap().name, "argon");
