@@ -23,10 +23,11 @@ pub use bands::fit_bands;
 
 use crate::lineshape::Shape;
 use serde::{Deserialize, Serialize};
+use std::fmt;
 use thiserror::Error;
 
 /// What a fit may be told; everything has a default.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone, PartialEq, Serialize)]
 pub struct FitOptions {
     /// Resolution of the instrument (FWHM), eV: no line is fitted narrower than 0.85 times this.
     pub resolution_ev: Option<f64>,
@@ -58,6 +59,13 @@ impl Default for FitOptions {
     }
 }
 
+impl FitError {
+    /// Whether the input was fine and the calculation did not come to rest.
+    pub fn is_not_converged(&self) -> bool {
+        matches!(self, FitError::Solver(solver::SolverError::NotConverged(_)))
+    }
+}
+
 /// How far a fit has come.
 #[derive(Debug, Clone, PartialEq)]
 pub struct FitStep {
@@ -82,6 +90,20 @@ pub enum Stage {
     Converged,
     /// Lines were grouped into bands.
     Grouped,
+}
+
+impl fmt::Display for FitStep {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        let (lines, chi_squared) = (self.lines, self.chi_squared);
+        match self.stage {
+            Stage::Candidates => write!(f, "candidates")?,
+            Stage::Added(round) => write!(f, "round {round}")?,
+            Stage::Pruned => write!(f, "pruned")?,
+            Stage::Converged => write!(f, "converged")?,
+            Stage::Grouped => write!(f, "grouped")?,
+        }
+        write!(f, ", {lines} lines, χ² {chi_squared:.0}")
+    }
 }
 
 /// Why there is no fit.

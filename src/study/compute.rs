@@ -47,7 +47,7 @@ pub fn levels_of(
             observer(&Event::Scf {
                 iteration: step.iteration,
                 energy_hartree: step.energy_hartree,
-                gradient: step.gradient,
+                gradient_hartree: step.gradient_hartree,
             })
         },
     )?;

@@ -77,17 +77,9 @@ pub(super) fn measured_overlay(measured: &Measured, grouping: &Grouping) -> Over
             .collect::<Vec<_>>()
     };
     let bands = (grouping.bands.iter())
-        .map(|band| {
-            let intensity = (trace.energy_ev.iter())
-                .map(|&energy| {
-                    let members = band.members.iter().map(|m| &fit.peaks[m.peak]);
-                    factor * members.map(|peak| peak.intensity(energy)).sum::<f64>()
-                })
-                .collect();
-            BandCurve {
-                band: band.id,
-                intensity,
-            }
+        .map(|band| BandCurve {
+            band: band.id,
+            intensity: shown(&fit.band_curve(band, &trace.energy_ev)),
         })
         .collect();
     Overlay {
@@ -98,25 +90,9 @@ pub(super) fn measured_overlay(measured: &Measured, grouping: &Grouping) -> Over
         fit: shown(&fit.total),
         background: shown(&fit.background),
         bands,
-        residual: residuals(measured),
+        residual: fit.residuals.clone(),
         ..Overlay::default()
     }
-}
-
-/// (Measured − fit) in standard deviations of the fitted counts where they are Poisson, else of
-/// the stated ones.
-fn residuals(measured: &Measured) -> Vec<f64> {
-    let Measured { trace, fit } = measured;
-    (0..trace.len())
-        .map(|i| {
-            let expected = fit.total[i] * trace.exposure_ev[i];
-            let sd = match trace.noise {
-                crate::trace::Noise::Poisson => crate::trace::poisson_sd(expected),
-                crate::trace::Noise::Stated => trace.sd[i],
-            };
-            (trace.counts[i] - expected) / sd
-        })
-        .collect()
 }
 
 fn sticks(levels: &Levels, assignment: &Assignment) -> Vec<OverlayStick> {

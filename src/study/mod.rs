@@ -119,8 +119,8 @@ pub enum Event {
         iteration: usize,
         /// Energy, hartree.
         energy_hartree: f64,
-        /// Largest element of the orbital gradient.
-        gradient: f64,
+        /// Largest element of the orbital gradient, hartree.
+        gradient_hartree: f64,
     },
     /// The fit moved on.
     Fit(String),
@@ -133,10 +133,10 @@ impl fmt::Display for Event {
             Event::Scf {
                 iteration,
                 energy_hartree,
-                gradient,
+                gradient_hartree,
             } => write!(
                 f,
-                "orbitals: iteration {iteration}, energy {energy_hartree:.8} hartree, gradient {gradient:.1e}"
+                "orbitals: iteration {iteration}, energy {energy_hartree:.8} hartree, gradient {gradient_hartree:.1e}"
             ),
             Event::Fit(text) => write!(f, "fit: {text}"),
         }
