@@ -69,7 +69,7 @@ pub struct ComputeArguments {
 #[derive(Debug, Args)]
 pub struct ReadArguments {
     /// What the axis holds [default: what the file says, else ionization energy]
-    #[arg(long, value_name = "ionization|kinetic|flight-time")]
+    #[arg(long, value_name = "ionization|kinetic|wavenumber|flight-time")]
     pub axis: Option<AxisName>,
     /// Photon energy, eV (He I α is 21.218)
     #[arg(long, value_name = "EV")]

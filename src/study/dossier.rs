@@ -68,7 +68,7 @@ pub(super) fn measured_overlay(measured: &Measured, grouping: &Grouping) -> Over
     // counts themselves are what the chemist knows.
     let (unit, factor) = match trace.axis {
         Axis::FlightTime { .. } => ("counts per eV", 1.0),
-        Axis::Ionization | Axis::Kinetic => ("counts", trace.exposure_ev[0]),
+        Axis::Ionization | Axis::Kinetic | Axis::Wavenumber => ("counts", trace.exposure_ev[0]),
     };
     let shown = |intensity: &[f64]| intensity.iter().map(|y| y * factor).collect::<Vec<_>>();
     let per_ev = |values: &[f64]| {
