@@ -85,6 +85,57 @@ impl Chart {
     }
 }
 
+impl Chart {
+    /// The same chart without the places from which no end can be reached.
+    fn without_dead_ends(mut self) -> Self {
+        let mut alive = vec![false; self.places];
+        self.ends.iter().for_each(|(place, _)| alive[*place] = true);
+        loop {
+            let before = alive.iter().filter(|a| **a).count();
+            for take in self.takes.iter().chain(&self.late_takes) {
+                alive[take.from] |= alive[take.to];
+            }
+            self.splits
+                .iter()
+                .for_each(|m| alive[m.from] |= alive[m.to]);
+            self.passes
+                .iter()
+                .rev()
+                .for_each(|m| alive[m.from] |= alive[m.to]);
+            if alive.iter().filter(|a| **a).count() == before {
+                break;
+            }
+        }
+        let mut number = vec![0; self.places];
+        let mut count = 0;
+        for place in 0..self.places {
+            if alive[place] {
+                number[place] = count;
+                count += 1;
+            }
+        }
+        self.places = count;
+        for takes in [&mut self.takes, &mut self.late_takes] {
+            takes.retain(|m| alive[m.to]);
+            takes
+                .iter_mut()
+                .for_each(|m| (m.from, m.to) = (number[m.from], number[m.to]));
+        }
+        self.splits.retain(|m| alive[m.to]);
+        self.splits
+            .iter_mut()
+            .for_each(|m| (m.from, m.to) = (number[m.from], number[m.to]));
+        self.passes.retain(|m| alive[m.to]);
+        self.passes
+            .iter_mut()
+            .for_each(|m| (m.from, m.to) = (number[m.from], number[m.to]));
+        self.ends
+            .iter_mut()
+            .for_each(|(place, _)| *place = number[*place]);
+        self
+    }
+}
+
 /// All sets allowed by size and gaps.
 fn all_sets(states: usize) -> Vec<Vec<usize>> {
     let mut sets = Vec::new();
@@ -199,7 +250,7 @@ impl<'a> Builder<'a> {
             .filter(|(place, _)| place.1.is_empty() && self.open[*place].arrived)
             .map(|((passed, _, _), number)| (*number, *passed))
             .collect();
-        Chart {
+        let chart = Chart {
             places: self.numbers.len(),
             sets: self.sets,
             gaps,
@@ -208,7 +259,8 @@ impl<'a> Builder<'a> {
             takes: self.takes,
             splits: self.splits,
             ends,
-        }
+        };
+        chart.without_dead_ends()
     }
 
     /// Sets made of waiting states alone.
@@ -238,7 +290,7 @@ impl<'a> Builder<'a> {
     fn travel(&mut self, place: &Place) {
         let (next, waiting, put_off) = place;
         let next = *next;
-        if next == self.prior.states.len() {
+        if next == self.prior.states.len() || self.hopeless(place) {
             return;
         }
         let from = self.number(place, false);
@@ -301,6 +353,17 @@ impl<'a> Builder<'a> {
                 });
             }
         }
+    }
+
+    /// Whether something waits here that nothing taken from here on leaves a chance.
+    fn hopeless(&self, place: &Place) -> bool {
+        let (next, waiting, put_off) = place;
+        let too_far = |state: &usize| !may_wait(self.prior, *state, *next);
+        let widest = LARGEST_SET + 1;
+        put_off.iter().any(too_far)
+            || waiting
+                .iter()
+                .any(|state| too_far(state) && next - state >= widest)
     }
 
     /// Whether all of `left` may wait after `taken`, the highest state so far, has been taken.

@@ -32,7 +32,9 @@ struct BandRow {
 }
 
 fn rows<T: for<'a> Deserialize<'a>>(text: &str) -> Vec<T> {
-    let mut reader = csv::ReaderBuilder::new().comment(Some(b'#')).from_reader(text.as_bytes());
+    let mut reader = csv::ReaderBuilder::new()
+        .comment(Some(b'#'))
+        .from_reader(text.as_bytes());
     reader.deserialize().map(|row| row.unwrap()).collect()
 }
 
@@ -42,7 +44,9 @@ fn level_rows() -> Vec<LevelRow> {
 
 fn band_rows(molecule: &str) -> Vec<BandRow> {
     let all: Vec<BandRow> = rows(include_str!("../data/assignment/bands.csv"));
-    all.into_iter().filter(|row| row.molecule == molecule).collect()
+    all.into_iter()
+        .filter(|row| row.molecule == molecule)
+        .collect()
 }
 
 const MOLECULES: [(&str, &str); 19] = [
@@ -69,8 +73,15 @@ const MOLECULES: [(&str, &str); 19] = [
 
 /// Koopmans levels of a molecule. Atom 0 stands for all N, O and F atoms, atom 1 for the rest.
 fn levels(molecule: &str, described: bool) -> Levels {
-    let formula = MOLECULES.iter().find(|m| m.0 == molecule).map_or("", |m| m.1);
-    let share = |atom, name: &str, share| AtomShare { atom, name: name.to_string(), share };
+    let formula = MOLECULES
+        .iter()
+        .find(|m| m.0 == molecule)
+        .map_or("", |m| m.1);
+    let share = |atom, name: &str, share| AtomShare {
+        atom,
+        name: name.to_string(),
+        share,
+    };
     let mut hole_states: Vec<HoleState> = (level_rows().into_iter())
         .filter(|row| row.molecule == molecule)
         .map(|row| HoleState {
@@ -96,10 +107,17 @@ fn levels(molecule: &str, described: bool) -> Levels {
         })
         .collect();
     if !described {
-        hole_states.iter_mut().for_each(|s| s.label = s.label.replace('π', "p"));
+        hole_states
+            .iter_mut()
+            .for_each(|s| s.label = s.label.replace('π', "p"));
     }
     hole_states.sort_by(|a, b| a.ionization_energy_ev.total_cmp(&b.ionization_energy_ev));
-    let atom = |element: &str| AtomLine { element: element.to_string(), x: 0.0, y: 0.0, z: 0.0 };
+    let atom = |element: &str| AtomLine {
+        element: element.to_string(),
+        x: 0.0,
+        y: 0.0,
+        z: 0.0,
+    };
     Levels {
         schema: SCHEMA.to_string(),
         program: String::new(),
@@ -142,7 +160,13 @@ fn band(vertical: f64, area: f64, fwhm: f64) -> Band {
         fwhm_ev: fwhm,
         spacing_ev: None,
         significance: 300.0,
-        members: vec![Member { peak: 0, position_ev: vertical, position_sd, area, area_sd }],
+        members: vec![Member {
+            peak: 0,
+            position_ev: vertical,
+            position_sd,
+            area,
+            area_sd,
+        }],
     }
 }
 
@@ -153,14 +177,19 @@ fn grouping(mut bands: Vec<Band>) -> Grouping {
         band.id = n + 1;
         band.members.iter_mut().for_each(|m| m.peak = n);
     }
-    Grouping { probability: 1.0, bands }
+    Grouping {
+        probability: 1.0,
+        bands,
+    }
 }
 
 /// Bands of a molecule: published positions; 1,000 counts per orbital times a factor between 0.6
 /// and 1.6 that runs through the list; width from vertical minus adiabatic where both are known.
 fn published(molecule: &str) -> Vec<Band> {
     let degeneracy = |label: &str| {
-        let row = level_rows().into_iter().find(|r| r.molecule == molecule && r.label == label);
+        let row = level_rows()
+            .into_iter()
+            .find(|r| r.molecule == molecule && r.label == label);
         row.map_or(1, |r| r.degeneracy)
     };
     let factors = [1.2, 0.7, 1.0, 1.6, 0.6, 1.4, 0.9];
@@ -180,7 +209,11 @@ fn published(molecule: &str) -> Vec<Band> {
 }
 
 fn he_i() -> Conditions {
-    Conditions { photon_energy_ev: Some(21.218), window_ev: [8.0, 20.8], scale_offset_sd_ev: 0.03 }
+    Conditions {
+        photon_energy_ev: Some(21.218),
+        window_ev: [8.0, 20.8],
+        scale_offset_sd_ev: 0.03,
+    }
 }
 
 fn run(levels: &Levels, bands: Vec<Band>) -> Assignment {
@@ -196,7 +229,9 @@ fn reading(outcome: &Assignment, id: usize, orbitals: &str) -> (f64, bool) {
         labels.sort_unstable();
         labels == wanted
     };
-    let Some(matched) = outcome.matches.iter().find(|m| m.band == id) else { return (0.0, false) };
+    let Some(matched) = outcome.matches.iter().find(|m| m.band == id) else {
+        return (0.0, false);
+    };
     if same(&matched.hole_states) {
         return (matched.probability, true);
     }
@@ -224,7 +259,10 @@ fn print(molecule: &str, outcome: &Assignment, truth: &[BandRow]) {
         );
     }
     for remark in &outcome.remarks {
-        println!("  {:?} {:.2}: {}", remark.kind, remark.position_ev, remark.text);
+        println!(
+            "  {:?} {:.2}: {}",
+            remark.kind, remark.position_ev, remark.text
+        );
     }
 }
 
@@ -240,7 +278,9 @@ fn published_bands_find_their_orbitals() {
             println!("{:?}", start.elapsed());
             let mut shown = truth.clone();
             if !described {
-                shown.iter_mut().for_each(|r| r.orbitals = r.orbitals.replace('π', "p"));
+                shown
+                    .iter_mut()
+                    .for_each(|r| r.orbitals = r.orbitals.replace('π', "p"));
             }
             print(molecule, &outcome, &shown);
             for (n, row) in shown.iter().enumerate() {
