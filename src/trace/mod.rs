@@ -17,6 +17,9 @@ mod error;
 mod options;
 mod record;
 mod regroup;
+mod stated;
+mod text;
+mod words;
 
 use std::path::Path;
 

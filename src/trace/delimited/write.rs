@@ -2,10 +2,10 @@
 
 use std::io::{self, Write};
 
-use super::super::{Axis, Noise, Trace};
-use super::stated::{
+use super::super::stated::{
     AXIS, COMMENT, LENGTH, MARK, NOISE, NOTE, PHOTON, RETARDING, SOURCE, TIME_ZERO, escape,
 };
+use super::super::{Axis, Noise, Trace};
 
 /// The columns of our own files.
 pub(super) const COLUMNS: [&str; 4] = ["energy_ev", "counts", "sd", "exposure_ev"];

@@ -6,8 +6,8 @@
 //! file the same lines about axis, photon energy and calibration are honoured, each with a note;
 //! one that is nearly right is left alone, also with a note.
 
-use super::super::error::Problem;
-use super::super::{Axis, Noise};
+use super::error::Problem;
+use super::{Axis, Noise};
 
 /// The mark of a file that we wrote.
 pub(super) const MARK: &str = "trace: bandproof/trace/1";
