@@ -70,6 +70,7 @@ pub(super) fn band(id: usize, vertical: f64, area: f64, fwhm: f64) -> Band {
         fwhm_ev: fwhm,
         spacing_ev: None,
         significance: 500.0,
+        peaks: vec![id - 1],
         members: vec![Member {
             peak: id - 1,
             position_ev: vertical,

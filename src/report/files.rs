@@ -22,7 +22,7 @@ pub fn write(dossier: &Dossier, folder: &Path) -> Result<Vec<PathBuf>, ReportErr
         reason: e.to_string(),
     })?;
     let figure = Figure::of(dossier)?;
-    let outputs = [
+    let outputs = vec![
         ("dossier.json", (json + "\n").into_bytes()),
         ("assignment.csv", assignment_csv(dossier)?.into_bytes()),
         ("assignment.md", assignment_md(dossier).into_bytes()),
@@ -31,8 +31,18 @@ pub fn write(dossier: &Dossier, folder: &Path) -> Result<Vec<PathBuf>, ReportErr
         ("overlay.pdf", figure.pdf()?),
         ("page.html", page_html(dossier, &figure).into_bytes()),
     ];
+    write_files(folder, outputs)
+}
+
+/// Puts finished outputs into a folder, which is made if need be: all of them or none.
+pub(super) fn write_files(
+    folder: &Path,
+    outputs: Vec<(&str, Vec<u8>)>,
+) -> Result<Vec<PathBuf>, ReportError> {
     let made = make_folder(folder)?;
-    let files = outputs.map(|(name, bytes)| (folder.join(name), bytes));
+    let files: Vec<(PathBuf, Vec<u8>)> = (outputs.into_iter())
+        .map(|(name, bytes)| (folder.join(name), bytes))
+        .collect();
     put_all(folder, &files).inspect_err(|_| {
         // Only what this call made, deepest first; a folder that others filled meanwhile stays.
         for folder in &made {
@@ -40,6 +50,21 @@ pub fn write(dossier: &Dossier, folder: &Path) -> Result<Vec<PathBuf>, ReportErr
         }
     })?;
     Ok(files.into_iter().map(|(path, _)| path).collect())
+}
+
+/// Writes one file, which appears complete or not at all.
+///
+/// # Errors
+/// [`ReportError::Write`].
+pub fn put_in_place(path: &Path, bytes: &[u8]) -> Result<(), ReportError> {
+    put_all(folder_of(path), &[(path.to_owned(), bytes.to_vec())])
+}
+
+fn folder_of(path: &Path) -> &Path {
+    match path.parent() {
+        Some(parent) if !parent.as_os_str().is_empty() => parent,
+        _ => Path::new("."),
+    }
 }
 
 /// Writes a figure as SVG, PNG or PDF, by the ending of the file's name.
@@ -62,11 +87,7 @@ pub fn write_figure(figure: &Figure, path: &Path) -> Result<(), ReportError> {
             });
         }
     };
-    let folder = match path.parent() {
-        Some(parent) if !parent.as_os_str().is_empty() => parent,
-        _ => Path::new("."),
-    };
-    put_all(folder, &[(path.to_owned(), bytes)])
+    put_in_place(path, &bytes)
 }
 
 /// Makes a folder and those above it; returns the ones that were missing, deepest first.

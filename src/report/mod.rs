@@ -14,6 +14,7 @@ mod markdown;
 mod page;
 mod panels;
 mod place;
+mod products;
 mod prose;
 mod render;
 mod sheet;
@@ -27,10 +28,11 @@ pub use dossier::{
     OverlayStick, PredictedCurve, SCHEMA, TraceSummary,
 };
 pub use figure::{Figure, Heading};
-pub use files::{write, write_figure};
+pub use files::{put_in_place, write, write_figure};
 pub use listings::{assignment_table, bands_table, levels_table};
 pub use markdown::assignment_md;
 pub use page::page_html;
+pub use products::{trace_summary, write_bands, write_prediction};
 pub use sheet::assignment_csv;
 
 use std::path::PathBuf;

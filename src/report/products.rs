@@ -1,7 +1,7 @@
 //! The smaller products: bands of a trace without a molecule, a prediction without a trace, and
 //! what is in a measured file.
 
-use super::files::{put_all_of, write_files};
+use super::files::write_files;
 use super::{Figure, Heading, Overlay, ReportError};
 use crate::fit::{Band, BandFit};
 use crate::levels::Levels;
@@ -52,14 +52,6 @@ pub fn write_prediction(
     ];
     outputs.extend(drawings(&figure, ["predicted.svg", "predicted.png", "predicted.pdf"])?);
     write_files(folder, outputs)
-}
-
-/// Writes one file, which appears complete or not at all.
-///
-/// # Errors
-/// [`ReportError::Write`].
-pub fn put_in_place(path: &Path, bytes: &[u8]) -> Result<(), ReportError> {
-    put_all_of(&[(path.to_owned(), bytes.to_vec())])
 }
 
 /// What is in a trace, for a terminal.

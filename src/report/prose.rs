@@ -97,6 +97,7 @@ pub fn trace(dossier: &Dossier) -> String {
     let axis = match t.axis {
         Axis::Ionization => "recorded against ionization energy".to_owned(),
         Axis::Kinetic => "recorded against kinetic energy".to_owned(),
+        Axis::Wavenumber => "recorded against wavenumber".to_owned(),
         Axis::FlightTime {
             length_m,
             time_zero_ns,
