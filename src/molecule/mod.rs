@@ -11,7 +11,7 @@ mod xyz;
 pub use elements::{
     LAST_SUPPORTED, core_orbitals, covalent_radius_angstrom, number_of_symbol, symbol,
 };
-pub use geometry::{BOND_FACTOR, BondedPair};
+pub use geometry::{BOND_SLACK_ANGSTROM, BondedPair};
 pub use xyz::{CLOSEST_ANGSTROM, FARTHEST_ANGSTROM, GeometryError};
 
 use nalgebra::Vector3;
