@@ -53,11 +53,9 @@ pub enum CharacterError {
         /// Smallest eigenvalue of the projected overlap.
         smallest: f64,
     },
-    /// The overlap of the basis cannot be factored.
-    #[error(
-        "the basis functions are linearly dependent, so populations cannot be computed; choose a smaller basis"
-    )]
-    DependentBasis,
+    /// The free-atom orbitals themselves are linearly dependent.
+    #[error("two atoms are so close that their orbitals cannot be told apart")]
+    CoincidentAtoms,
     /// Eigenvalues could not be found.
     #[error(transparent)]
     Linalg(#[from] LinalgError),
