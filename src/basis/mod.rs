@@ -6,6 +6,7 @@
 //! All functions are spherical, also the d functions of 6-31G*.
 
 mod data;
+pub mod harmonics;
 mod minimal;
 mod set;
 

@@ -3,8 +3,9 @@
 //! Everything here is an average over the members of the set, which is the same for every choice
 //! of members inside it.
 
-use super::frame::{Frame, pi_shares, turn_to_z, turned_harmonics};
+use super::frame::{Frame, pi_shares, turn_to_z};
 use super::intrinsic::IntrinsicOrbitals;
+use crate::basis::harmonics::turned_harmonics;
 use crate::molecule::Molecule;
 use crate::units::hartree_to_ev;
 use nalgebra::DMatrix;

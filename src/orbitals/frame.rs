@@ -1,10 +1,10 @@
 //! Shape of the nuclear frame (linear, planar, solid) and what it makes of σ and π.
 
 use super::intrinsic::IntrinsicOrbitals;
+use crate::basis::harmonics::turned_harmonics;
 use crate::molecule::Molecule;
-use crate::numeric::harmonics::solid_harmonics;
 use crate::units::angstrom_to_bohr;
-use nalgebra::{DMatrix, DVector, Matrix3, Rotation3, Vector3};
+use nalgebra::{DVector, Matrix3, Rotation3, Vector3};
 use std::f64::consts::PI;
 
 /// Atoms within this of one line or plane make a linear or planar molecule, Å.
@@ -99,43 +99,6 @@ pub fn turn_to_z(direction: &Vector3<f64>) -> Matrix3<f64> {
         .into_inner()
 }
 
-/// How the harmonics of one l mix when the axes are turned or mirrored: the matrix D with
-/// S_l(R·r) = D(R)·S_l(r), orthogonal for an orthogonal R. Coefficients c over S_l(r) become D·c.
-///
-/// D is found from the harmonics' values on an even set of points: D = (Σ S(R·r) S(r)ᵀ) (Σ S(r)
-/// S(r)ᵀ)⁻¹, which is exact because the harmonics of one l are closed under R.
-pub fn turned_harmonics(l: usize, turn: &Matrix3<f64>) -> DMatrix<f64> {
-    let size = 2 * l + 1;
-    let (mut mixed, mut gram) = (DMatrix::zeros(size, size), DMatrix::zeros(size, size));
-    let points = 4 * size;
-    for i in 0..points {
-        // Golden-angle spiral: even coverage of the sphere.
-        let z = 1.0 - (2 * i + 1) as f64 / points as f64;
-        let (sin, cos) = (i as f64 * PI * (3.0 - 5f64.sqrt())).sin_cos();
-        let ring = (1.0 - z * z).sqrt();
-        let point = Vector3::new(ring * cos, ring * sin, z);
-        let here = harmonic_values(l, &point);
-        mixed += harmonic_values(l, &(turn * point)) * here.transpose();
-        gram += &here * here.transpose();
-    }
-    let solution = gram.lu().solve(&mixed.transpose());
-    solution
-        .expect("the spiral determines the harmonics")
-        .transpose()
-}
-
-/// Value of every S_lm at a point, m from −l to +l.
-fn harmonic_values(l: usize, point: &Vector3<f64>) -> DVector<f64> {
-    let value = |harmonic: &Vec<crate::numeric::harmonics::Monomial>| -> f64 {
-        let term = |t: &crate::numeric::harmonics::Monomial| -> f64 {
-            let powers = (0..3).map(|x| point[x].powi(t.powers[x] as i32));
-            t.coefficient * powers.product::<f64>()
-        };
-        harmonic.iter().map(term).sum()
-    };
-    DVector::from_iterator(2 * l + 1, solid_harmonics(l).iter().map(value))
-}
-
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -164,29 +127,6 @@ mod tests {
             frame("N 0 0 0.3\nH 0.94 0 0\nH -0.47 0.81 0\nH -0.47 -0.81 0"),
             Frame::Solid
         );
-    }
-
-    #[test]
-    fn turning_twice_is_turning_by_the_product() {
-        let first = Rotation3::from_euler_angles(0.4, -1.2, 2.2).into_inner();
-        let second = Rotation3::from_euler_angles(-0.9, 0.3, 0.7).into_inner();
-        let mirror = Matrix3::from_diagonal(&Vector3::new(1.0, 1.0, -1.0));
-        for l in 0..=5 {
-            let one_by_one = turned_harmonics(l, &first) * turned_harmonics(l, &second);
-            let at_once = turned_harmonics(l, &(first * second));
-            assert!((&one_by_one - &at_once).amax() < 1e-12, "l = {l}");
-            let identity = DMatrix::identity(2 * l + 1, 2 * l + 1);
-            assert!(
-                (&at_once * at_once.transpose() - identity).amax() < 1e-12,
-                "l = {l}"
-            );
-            // A mirror through xy changes the sign where l + m is odd.
-            let signs = turned_harmonics(l, &mirror);
-            for row in 0..=2 * l {
-                let sign = if row % 2 == 0 { 1.0 } else { -1.0 };
-                assert!((signs[(row, row)] - sign).abs() < 1e-12, "l = {l}");
-            }
-        }
     }
 
     #[test]
