@@ -72,20 +72,8 @@ pub fn run(
             gradient_hartree: gradient,
         };
         observer(&step);
-        if step.converged(options) {
-            let orbitals = types::orbitals(&x, &focks, &occupied)?;
-            return Ok(ScfResult {
-                orbitals,
-                energy_hartree: energy,
-                nuclear_repulsion_hartree,
-                iterations: iteration,
-                energy_change_hartree: step.energy_change_hartree,
-                gradient_hartree: gradient,
-                dipole_debye: dipole_moment(molecule, basis, &density.total),
-                removed_functions: removed,
-            });
-        }
-        if iteration == options.max_iterations || !energy.is_finite() {
+        if !step.converged(options) && (iteration == options.max_iterations || !energy.is_finite())
+        {
             return Err(ScfError::NotConverged {
                 iterations: iteration,
                 energy_change_hartree: step.energy_change_hartree,
@@ -93,6 +81,20 @@ pub fn run(
             });
         }
         let focks = steering.next(&step, focks, gradients, &density.channels, &s);
+        if step.converged(options) {
+            // The extrapolated Fock matrix is closer to the solution than the last one.
+            let orbitals = types::orbitals(&x, &focks, &occupied)?;
+            return Ok(ScfResult {
+                dipole_debye: dipole_moment(molecule, basis, &orbitals.total_density()),
+                orbitals,
+                energy_hartree: energy,
+                nuclear_repulsion_hartree,
+                iterations: iteration,
+                energy_change_hartree: step.energy_change_hartree,
+                gradient_hartree: gradient,
+                removed_functions: removed,
+            });
+        }
         channels = occupy(&x, &focks, &occupied)?;
         last_energy = energy;
     }

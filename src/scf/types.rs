@@ -71,7 +71,7 @@ impl Default for ScfOptions {
         Self {
             max_iterations: 128,
             energy_tolerance_hartree: 1e-9,
-            gradient_tolerance_hartree: 1e-6,
+            gradient_tolerance_hartree: 1e-7,
             memory_limit_bytes: 16_000_000_000,
         }
     }
