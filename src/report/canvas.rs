@@ -389,7 +389,10 @@ mod tests {
     fn dashes_have_their_lengths() {
         let line = [[0.0, 0.0], [4.0, 0.0], [10.0, 0.0]];
         let pieces = dashes(&line, 3.0, 2.0);
-        let ends: Vec<_> = pieces.iter().map(|p| (p[0][0], p[p.len() - 1][0])).collect();
+        let ends: Vec<_> = pieces
+            .iter()
+            .map(|p| (p[0][0], p[p.len() - 1][0]))
+            .collect();
         assert_eq!(ends, [(0.0, 3.0), (5.0, 8.0)]);
     }
 
@@ -421,6 +424,14 @@ mod tests {
         // Advance of a digit in this font: 1303 of 2048 units to the em.
         let zero = text_width("0", style);
         assert!((zero - 13_030.0 / 2048.0).abs() < 0.01, "{zero}");
-        assert!(text_width("0", Type { bold: true, ..style }) > zero);
+        assert!(
+            text_width(
+                "0",
+                Type {
+                    bold: true,
+                    ..style
+                }
+            ) > zero
+        );
     }
 }

@@ -5,10 +5,10 @@
 //! not ask again.
 
 use super::ReportError;
-use crate::assign::{Match, Remark};
-use crate::fit::{Band, CorrelatedPair, FitStatistics, Peak};
+use crate::assign::{Assignment, Match, Remark};
+use crate::fit::{Band, BandFit, CorrelatedPair, FitStatistics, Peak};
 use crate::levels::{Levels, Verdict};
-use crate::trace::{Axis, Noise};
+use crate::trace::{Axis, Noise, Trace};
 use serde::{Deserialize, Serialize};
 
 /// Name of the JSON schema of [`Dossier`].
@@ -182,6 +182,52 @@ pub enum Direction {
     Falling,
 }
 
+impl TraceSummary {
+    /// What a dossier keeps of a trace that is not empty, beside its points.
+    pub fn of(trace: &Trace) -> Self {
+        TraceSummary {
+            source: trace.source.clone(),
+            channels: trace.len(),
+            span_ev: trace.span_ev(),
+            photon_energy_ev: trace.photon_energy_ev,
+            axis: trace.axis,
+            noise: trace.noise,
+            comments: trace.comments.clone(),
+        }
+    }
+}
+
+impl FitSummary {
+    /// What a dossier keeps of a fit, beside the chosen bands and the curves.
+    pub fn of(fit: &BandFit) -> Self {
+        let groupings = fit.groupings.iter().map(|g| GroupingOdds {
+            probability: g.probability,
+            vertical_ev: g.bands.iter().map(|b| b.vertical_ev).collect(),
+        });
+        FitSummary {
+            statistics: fit.statistics.clone(),
+            peaks: fit.peaks.clone(),
+            undetermined: fit.undetermined.clone(),
+            correlations: fit.correlations.clone(),
+            groupings: groupings.collect(),
+        }
+    }
+}
+
+impl AssignmentSummary {
+    /// What a dossier keeps of an assignment, beside matches and remarks.
+    pub fn of(assignment: &Assignment) -> Self {
+        AssignmentSummary {
+            grouping: assignment.grouping,
+            grouping_probability: assignment.grouping_probability,
+            shift_ev: assignment.shift_ev,
+            shift_sd_ev: assignment.shift_sd_ev,
+            scale: assignment.scale,
+            unseen: assignment.unseen.clone(),
+        }
+    }
+}
+
 impl Dossier {
     /// Says whether the dossier can be drawn and written: arrays of equal length, numbers finite
     /// (JSON has no others), ids and labels that exist.
@@ -214,11 +260,7 @@ impl Dossier {
                     return wrong(place, format!("there is no hole state '{label}'"));
                 }
             }
-            let numbers = [
-                found.probability,
-                found.residual_raw_ev,
-                found.residual_ev,
-            ];
+            let numbers = [found.probability, found.residual_raw_ev, found.residual_ev];
             finite(&place, &numbers)?;
         }
         for (i, remark) in self.remarks.iter().enumerate() {
@@ -243,12 +285,7 @@ impl Dossier {
         let a = &self.assignment;
         finite(
             "assignment",
-            &[
-                a.grouping_probability,
-                a.shift_ev,
-                a.shift_sd_ev,
-                a.scale,
-            ],
+            &[a.grouping_probability, a.shift_ev, a.shift_sd_ev, a.scale],
         )?;
         for state in &self.levels.hole_states {
             finite(

@@ -18,7 +18,7 @@ use crate::fit::Band;
 const PAGE_WIDTH: f64 = 510.24;
 /// Left and right edges of the panels.
 const EDGES: [f64; 2] = [50.0, 500.0];
-const RESIDUAL_HEIGHT: f64 = 37.0;
+const RESIDUAL_HEIGHT: f64 = 43.0;
 const TRACE_HEIGHT: f64 = 160.0;
 const PANEL_GAP: f64 = 5.0;
 const AXIS_HEIGHT: f64 = 31.0;
@@ -128,11 +128,13 @@ impl Figure {
             details.push(format!("hν = {energy:.2} eV"));
         }
         details.push(dossier.levels.level.to_string());
-        if !dossier.overlay.sticks.is_empty() {
+        if !dossier.matches.is_empty() {
             let a = &dossier.assignment;
             let sign = if a.shift_ev < 0.0 { '−' } else { '+' };
             let (scale, shift) = (a.scale, a.shift_ev.abs());
-            details.push(format!("shifted: {scale:.3} × computed {sign} {shift:.2} eV"));
+            details.push(format!(
+                "shifted: {scale:.3} × computed {sign} {shift:.2} eV"
+            ));
         }
         let heading = Heading {
             title,
@@ -170,7 +172,7 @@ impl Figure {
         }
         panels::trace(&mut ink, &scene, [top, top + TRACE_HEIGHT]);
         top += TRACE_HEIGHT;
-        if !overlay.sticks.is_empty() {
+        if overlay.sticks.iter().any(|s| scene.x.holds(s.shifted_ev)) {
             top = super::sticks::draw(&mut ink, &scene, top + PANEL_GAP);
         }
         draw_axis(&mut ink, &scene, top);

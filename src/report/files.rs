@@ -17,13 +17,10 @@ use tempfile::NamedTempFile;
 /// Any [`ReportError`].
 pub fn write(dossier: &Dossier, folder: &Path) -> Result<Vec<PathBuf>, ReportError> {
     dossier.check()?;
-    let json = serde_json::to_string_pretty(dossier).map_err(|e| ReportError::Encoding {
-        name: "dossier.json",
-        reason: e.to_string(),
-    })?;
+    let json = dossier_json(dossier)?;
     let figure = Figure::of(dossier)?;
     let outputs = vec![
-        ("dossier.json", (json + "\n").into_bytes()),
+        ("dossier.json", json.into_bytes()),
         ("assignment.csv", assignment_csv(dossier)?.into_bytes()),
         ("assignment.md", assignment_md(dossier).into_bytes()),
         ("overlay.svg", figure.svg().as_bytes().to_vec()),
@@ -67,6 +64,18 @@ fn folder_of(path: &Path) -> &Path {
     }
 }
 
+/// The dossier as JSON that can be read back.
+fn dossier_json(dossier: &Dossier) -> Result<String, ReportError> {
+    let failed = |e: serde_json::Error| ReportError::Encoding {
+        name: "dossier.json",
+        reason: e.to_string(),
+    };
+    let json = serde_json::to_string_pretty(dossier).map_err(failed)?;
+    // JSON has no infinities and turns them into null, which no reader takes for a number.
+    serde_json::from_str::<Dossier>(&json).map_err(failed)?;
+    Ok(json + "\n")
+}
+
 /// Writes a figure as SVG, PNG or PDF, by the ending of the file's name.
 ///
 /// # Errors
@@ -80,10 +89,7 @@ pub fn write_figure(figure: &Figure, path: &Path) -> Result<(), ReportError> {
         _ => {
             return Err(ReportError::Drawing {
                 format: "file",
-                reason: format!(
-                    "'{}' should end in .svg, .png or .pdf",
-                    path.display()
-                ),
+                reason: format!("'{}' should end in .svg, .png or .pdf", path.display()),
             });
         }
     };

@@ -8,7 +8,7 @@ use super::words::{
 };
 use crate::assign::Match;
 use crate::fit::{Band, BandFit, FitStatistics};
-use crate::levels::{Character, HoleState, LineKind, Levels};
+use crate::levels::{Character, HoleState, Levels, LineKind};
 
 use Lean::{Left, Right};
 
@@ -90,7 +90,10 @@ pub fn levels_table(levels: &Levels) -> String {
 }
 
 fn energy_with(band: &Band, value: f64) -> String {
-    format!("{value:.digits$}", digits = decimals(band.vertical_sd).clamp(2, 4))
+    format!(
+        "{value:.digits$}",
+        digits = decimals(band.vertical_sd).clamp(2, 4)
+    )
 }
 
 /// Bands as they were found, without any assignment.
@@ -106,15 +109,23 @@ pub fn bands(bands: &[Band]) -> Table {
         ("Spacing / eV", Right),
     ]);
     for band in bands {
-        let origin = band.origin_ev.map_or("–".to_owned(), |o| energy_with(band, o));
-        let spacing = band.spacing_ev.map_or("–".to_owned(), |s| format!("{s:.3}"));
+        let origin = band
+            .origin_ev
+            .map_or("–".to_owned(), |o| energy_with(band, o));
+        let spacing = band
+            .spacing_ev
+            .map_or("–".to_owned(), |s| format!("{s:.3}"));
         table.row(vec![
             words(band.id.to_string()),
             words(measured(band.vertical_ev, band.vertical_sd)),
             words(energy_with(band, band.maximum_ev)),
             words(origin),
             words(format!("{:.3}", band.fwhm_ev)),
-            words(format!("{} ± {}", thousands(band.area), thousands(band.area_sd))),
+            words(format!(
+                "{} ± {}",
+                thousands(band.area),
+                thousands(band.area_sd)
+            )),
             words(band.members.len().to_string()),
             words(spacing),
         ]);
@@ -136,7 +147,11 @@ pub fn bands_table(fit: &BandFit) -> String {
             percent(first.probability)
         ));
         for grouping in &fit.groupings[1..] {
-            let places: Vec<String> = grouping.bands.iter().map(|b| energy(b.vertical_ev)).collect();
+            let places: Vec<String> = grouping
+                .bands
+                .iter()
+                .map(|b| energy(b.vertical_ev))
+                .collect();
             out.push_str(&format!(
                 "  {}: {} with vertical energies {} eV\n",
                 percent(grouping.probability),
@@ -162,16 +177,23 @@ fn fit_line(statistics: &FitStatistics) -> String {
 
 /// The computed states that a match names, in its order.
 pub(super) fn states_of<'a>(dossier: &'a Dossier, found: &'a Match) -> Vec<&'a HoleState> {
-    let state = |label: &String| dossier.levels.hole_states.iter().find(|s| &s.label == label);
+    let state = |label: &String| {
+        dossier
+            .levels
+            .hole_states
+            .iter()
+            .find(|s| &s.label == label)
+    };
     found.hole_states.iter().filter_map(state).collect()
 }
 
-/// `bonding: C–H σ`.
+/// `bonding: C–H σ`, or the description alone where it says the verdict itself.
 pub(super) fn character(character: &Character) -> String {
     let verdict = character.verdict.to_string();
-    match character.description.is_empty() || character.description == verdict {
-        true => verdict,
-        false => format!("{verdict}: {}", character.description),
+    match character.description.as_str() {
+        "" => verdict,
+        text if text.contains(&verdict) => text.to_owned(),
+        text => format!("{verdict}: {text}"),
     }
 }
 
@@ -211,10 +233,15 @@ pub fn assignment(dossier: &Dossier) -> Table {
     ]);
     let total: f64 = dossier.bands.iter().map(|b| b.area).sum();
     for band in &dossier.bands {
-        let origin = band.origin_ev.map_or(String::new(), |o| energy_with(band, o));
+        let origin = band
+            .origin_ev
+            .map_or(String::new(), |o| energy_with(band, o));
         let found = dossier.match_of(band.id);
         let states = found.map_or(Vec::new(), |m| states_of(dossier, m));
-        let computed: Vec<String> = states.iter().map(|s| energy(s.ionization_energy_ev)).collect();
+        let computed: Vec<String> = states
+            .iter()
+            .map(|s| energy(s.ionization_energy_ev))
+            .collect();
         let mut kinds: Vec<String> = Vec::new();
         for kind in found.iter().flat_map(|m| &m.character).map(character) {
             if !kinds.contains(&kind) {
@@ -230,14 +257,23 @@ pub fn assignment(dossier: &Dossier) -> Table {
                 true => words("none"),
                 false => labels(&other.hole_states),
             };
-            others = others.then(names).then(words(format!(" {}", percent(other.probability))));
+            others = others
+                .then(names)
+                .then(words(format!(" {}", percent(other.probability))));
         }
         table.row(vec![
             words(band.id.to_string()),
             words(measured(band.vertical_ev, band.vertical_sd)),
             words(energy_with(band, band.maximum_ev)),
             words(origin),
-            words(format!("{:.1}", if total > 0.0 { 100.0 * band.area / total } else { 0.0 })),
+            words(format!(
+                "{:.1}",
+                if total > 0.0 {
+                    100.0 * band.area / total
+                } else {
+                    0.0
+                }
+            )),
             found.map_or(words("–"), |m| labels(&m.hole_states)),
             words(computed.join(", ")),
             words(found.map_or(String::new(), |m| signed(m.residual_ev))),
@@ -265,9 +301,16 @@ pub fn assignment_table(dossier: &Dossier) -> String {
     for band in &dossier.bands {
         let found = dossier.match_of(band.id);
         let states = found.map_or(Vec::new(), |m| states_of(dossier, m));
-        let computed: Vec<String> = states.iter().map(|s| energy(s.ionization_energy_ev)).collect();
+        let computed: Vec<String> = states
+            .iter()
+            .map(|s| energy(s.ionization_energy_ev))
+            .collect();
         let mut verdicts: Vec<String> = Vec::new();
-        for verdict in found.iter().flat_map(|m| &m.character).map(|c| c.verdict.to_string()) {
+        for verdict in found
+            .iter()
+            .flat_map(|m| &m.character)
+            .map(|c| c.verdict.to_string())
+        {
             if !verdicts.contains(&verdict) {
                 verdicts.push(verdict);
             }

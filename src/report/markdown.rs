@@ -14,7 +14,7 @@ pub fn assignment_md(dossier: &Dossier) -> String {
     let formula = chemical(&dossier.levels.molecule.formula).unicode();
     let title = escaped(&dossier.title);
     let mut part = |text: String| {
-        out.push_str(&text);
+        out.push_str(text.trim_end());
         out.push_str("\n\n");
     };
     part(format!("# Photoelectron bands of {title} ({formula})"));
@@ -29,7 +29,10 @@ pub fn assignment_md(dossier: &Dossier) -> String {
     part(prose::WORDS_OF_ENERGY.to_owned());
     if !dossier.assignment.unseen.is_empty() {
         let names = dossier.assignment.unseen.join(", ");
-        part(format!("Computed inside the trace, but no band was found for: {}.", escaped(&names)));
+        part(format!(
+            "Computed inside the trace, but no band was found for: {}.",
+            escaped(&names)
+        ));
     }
     evidence(dossier, &mut part);
     remarks(dossier, &mut part);
@@ -42,7 +45,10 @@ pub fn assignment_md(dossier: &Dossier) -> String {
     if !notes.is_empty() {
         part(bullets(notes.iter().map(|n| escaped(n))));
     }
-    part(format!("## Computed levels ({})", escaped(&dossier.levels.level.to_string())));
+    part(format!(
+        "## Computed levels ({})",
+        escaped(&dossier.levels.level.to_string())
+    ));
     part(hole_states(&dossier.levels).markdown());
     part(prose::level_limits(dossier.levels.level.method).to_owned());
     part("## Trace and settings".to_owned());
@@ -52,7 +58,9 @@ pub fn assignment_md(dossier: &Dossier) -> String {
         part(bullets(dossier.trace.comments.iter().map(|c| escaped(c))));
     }
     if !dossier.study.is_empty() {
-        let lines = settings(dossier).into_iter().map(|(k, v)| format!("`{k}`: {}", escaped(&v)));
+        let lines = settings(dossier)
+            .into_iter()
+            .map(|(k, v)| format!("`{k}`: {}", escaped(&v)));
         part(bullets(lines));
     }
     part(format!("Made by {}.", escaped(&dossier.program)));
@@ -63,7 +71,10 @@ pub fn assignment_md(dossier: &Dossier) -> String {
 }
 
 fn bullets(lines: impl Iterator<Item = String>) -> String {
-    lines.map(|l| format!("- {l}")).collect::<Vec<_>>().join("\n")
+    lines
+        .map(|l| format!("- {l}"))
+        .collect::<Vec<_>>()
+        .join("\n")
 }
 
 fn evidence(dossier: &Dossier, part: &mut impl FnMut(String)) {
@@ -80,7 +91,12 @@ fn evidence(dossier: &Dossier, part: &mut impl FnMut(String)) {
             percent(found.probability)
         ));
         part(bullets(found.evidence.iter().map(|e| {
-            format!("{}: {}{}", stance(e.stance), escaped(&e.text), odds(e.weight))
+            format!(
+                "{}: {}{}",
+                stance(e.stance),
+                escaped(&e.text),
+                odds(e.weight)
+            )
         })));
     }
 }

@@ -109,7 +109,10 @@ pub fn page_html(dossier: &Dossier, figure: &Figure) -> String {
 }
 
 fn caption(dossier: &Dossier) -> &'static str {
-    match (dossier.overlay.sticks.is_empty(), dossier.overlay.fit.is_empty()) {
+    match (
+        dossier.overlay.sticks.is_empty(),
+        dossier.overlay.fit.is_empty(),
+    ) {
         (true, true) => "The measured trace.",
         (true, false) => {
             "Top: residuals of the fit in standard deviations. Below: the measured trace, the \

@@ -1,5 +1,6 @@
 //! The measured half of the figure: residuals, trace, bands, legend.
 
+use super::OverlayStick;
 use super::axes::{Scale, intensity_title, unit_of};
 use super::canvas::{Anchor, Canvas, Ink, Type, width};
 use super::figure::{BLACK, PALE, SMALL, SOFT, Scene, TEXT, is_foreign};
@@ -218,10 +219,17 @@ fn draw_measured(ink: &mut Canvas, scene: &Scene<'_>, y: &Scale) {
         };
         let last = curve.intensity.iter().rposition(above).unwrap_or(first);
         let range = first.saturating_sub(1)..(last + 2).min(energies.len());
-        let sums: Vec<f64> = range.clone().map(|i| base[i] + curve.intensity[i]).collect();
+        let sums: Vec<f64> = range
+            .clone()
+            .map(|i| base[i] + curve.intensity[i])
+            .collect();
         let upper = at(&scene.x, y, &energies[range.clone()], &sums);
         let mut shape = upper.clone();
-        shape.extend(at(&scene.x, y, &energies[range.clone()], &base[range]).iter().rev());
+        shape.extend(
+            at(&scene.x, y, &energies[range.clone()], &base[range])
+                .iter()
+                .rev(),
+        );
         let colour = scene.ink(curve.band);
         ink.area(&shape, colour.at(0.30));
         outlines.push((upper, colour));
@@ -229,12 +237,20 @@ fn draw_measured(ink: &mut Canvas, scene: &Scene<'_>, y: &Scale) {
     let dots = Dots::new(scene);
     let points = at(&scene.x, y, &overlay.energy_ev, &overlay.intensity);
     if dots.bars {
-        for ((point, value), sd) in points.iter().zip(&overlay.intensity).zip(&overlay.intensity_sd) {
+        for ((point, value), sd) in points
+            .iter()
+            .zip(&overlay.intensity)
+            .zip(&overlay.intensity_sd)
+        {
             let ends = [y.at(value - sd).min(y.at(low)), y.at(value + sd)];
             if point[1] - ends[1] > dots.radius + 0.4 {
                 ink.line(&[[point[0], ends[0]], [point[0], ends[1]]], BAR, 0.4);
             }
         }
+    }
+    if overlay.fit.is_empty() {
+        // No fit leads the eye from point to point.
+        ink.line(&points, BAR, 0.5);
     }
     dots.draw(ink, &dots.thinned(&points));
     if !overlay.fit.is_empty() {
@@ -273,7 +289,11 @@ fn draw_marks(ink: &mut Canvas, scene: &Scene<'_>, bottom: f64) {
         }
         if scene.x.holds(band.vertical_ev) {
             let x = scene.x.at(band.vertical_ev);
-            let corners = [[x, bottom - 6.0], [x - 2.2, bottom - 0.6], [x + 2.2, bottom - 0.6]];
+            let corners = [
+                [x, bottom - 6.0],
+                [x - 2.2, bottom - 0.6],
+                [x + 2.2, bottom - 0.6],
+            ];
             ink.area(&corners, colour);
         }
     }
@@ -316,16 +336,26 @@ fn place_labels(scene: &Scene<'_>, y: &Scale, floor: f64) -> Vec<Label> {
     // Numbers first, the tallest bands before the others: they have the best right to their place.
     let mut wanted: Vec<(f64, Words, Type)> = Vec::new();
     for band in scene.bands.iter().filter(|b| shown(b.maximum_ev)) {
-        let mark = if scene.foreign(band.id).is_some() { "†" } else { "" };
+        let mark = if scene.foreign(band.id).is_some() {
+            "†"
+        } else {
+            ""
+        };
         let words = Words::from(format!("{}{mark}", band.id));
         wanted.push((scene.x.at(band.maximum_ev), words, number_style(band.id)));
     }
     wanted.sort_by(|a, b| {
         let height = |x: f64| skyline.top(x - 0.5, x + 0.5);
-        height(a.0).total_cmp(&height(b.0)).then(a.0.total_cmp(&b.0))
+        height(a.0)
+            .total_cmp(&height(b.0))
+            .then(a.0.total_cmp(&b.0))
     });
     let mut causes: Vec<(f64, Words, Type)> = Vec::new();
-    for remark in scene.remarks.iter().filter(|r| is_foreign(r) && shown(r.position_ev)) {
+    for remark in scene
+        .remarks
+        .iter()
+        .filter(|r| is_foreign(r) && shown(r.position_ev))
+    {
         let band = scene.bands.iter().find(|b| Some(b.id) == remark.band);
         let (energy, mark) = match band.filter(|b| shown(b.maximum_ev)) {
             Some(band) => (band.maximum_ev, ""),
@@ -342,11 +372,20 @@ fn place_labels(scene: &Scene<'_>, y: &Scale, floor: f64) -> Vec<Label> {
     for (i, (x, words, style)) in wanted.into_iter().chain(causes).enumerate() {
         let size = [width(&words, style), style.size + 0.5];
         let others: Vec<f64> = match i.checked_sub(count) {
-            Some(k) => places.iter().enumerate().filter(|(j, _)| *j != k).map(|(_, x)| *x).collect(),
+            Some(k) => places
+                .iter()
+                .enumerate()
+                .filter(|(j, _)| *j != k)
+                .map(|(_, x)| *x)
+                .collect(),
             None => Vec::new(),
         };
         let perch = percher.perch(x, size, &others);
-        labels.push(Label { words, style, perch });
+        labels.push(Label {
+            words,
+            style,
+            perch,
+        });
     }
     labels
 }
@@ -356,8 +395,8 @@ enum Sample {
     Dot,
     Line(Ink, f64),
     Dashes(Ink, f64),
-    Triangle(Ink),
-    Tick(Ink),
+    Triangle,
+    Tick,
     Dagger,
     Absent,
 }
@@ -366,8 +405,8 @@ impl Sample {
     fn width(&self) -> f64 {
         match self {
             Sample::Line(..) | Sample::Dashes(..) => 13.0,
-            Sample::Dot | Sample::Triangle(_) => 5.0,
-            Sample::Tick(_) | Sample::Dagger | Sample::Absent => 4.0,
+            Sample::Dot | Sample::Triangle => 5.0,
+            Sample::Tick | Sample::Dagger | Sample::Absent => 4.0,
         }
     }
 
@@ -381,12 +420,12 @@ impl Sample {
             Sample::Dashes(colour, width) => {
                 ink.dashed(&[[x, mid], [right, mid]], colour, width, 3.0, 2.0);
             }
-            Sample::Triangle(colour) => {
+            Sample::Triangle => {
                 let foot = mid + 2.6;
-                ink.area(&[[centre, mid - 2.8], [x, foot], [right, foot]], colour);
+                ink.area(&[[centre, mid - 2.8], [x, foot], [right, foot]], SOFT);
             }
-            Sample::Tick(colour) => {
-                ink.line(&[[centre, mid - 2.4], [centre, mid + 2.6]], colour, 0.8);
+            Sample::Tick => {
+                ink.line(&[[centre, mid - 2.4], [centre, mid + 2.6]], SOFT, 0.8);
             }
             Sample::Dagger => ink.text([x, base], Anchor::Start, &Words::from("†"), TEXT),
             Sample::Absent => {
@@ -409,22 +448,23 @@ pub fn legend(ink: &mut Canvas, scene: &Scene<'_>, [left, base]: [f64; 2]) -> f6
         entries.push((Sample::Line(BLACK, 0.9), "fit"));
         entries.push((Sample::Dashes(BACKGROUND, 0.7), "background"));
     }
-    if let Some(first) = scene.bands.first() {
-        let colour = scene.ink(first.id).darker(0.85);
-        entries.push((Sample::Triangle(colour), "vertical energy"));
+    if !scene.bands.is_empty() {
+        entries.push((Sample::Triangle, "vertical energy"));
         if scene.bands.iter().any(|b| b.members.len() > 1) {
-            entries.push((Sample::Tick(colour), "member"));
+            entries.push((Sample::Tick, "member"));
         }
     }
     if scene.remarks.iter().any(is_foreign) {
         entries.push((Sample::Dagger, "not this molecule"));
     }
-    if overlay.predicted.is_some() {
+    let shown = |s: &OverlayStick| scene.x.holds(s.shifted_ev);
+    let has_sticks = overlay.sticks.iter().any(shown);
+    if overlay.predicted.is_some() && (has_sticks || !scene.is_measured()) {
         entries.push((Sample::Line(PREDICTED, 0.9), "predicted"));
     }
-    let absent = |s: &crate::report::OverlayStick| s.band.is_none() && scene.x.holds(s.shifted_ev);
+    let absent = |s: &OverlayStick| s.band.is_none() && shown(s);
     if scene.is_measured() && overlay.sticks.iter().any(absent) {
-        entries.push((Sample::Absent, "no band found"));
+        entries.push((Sample::Absent, "no band"));
     }
     let (mut x, mut base) = (left, base);
     for (sample, text) in entries {
@@ -436,7 +476,7 @@ pub fn legend(ink: &mut Canvas, scene: &Scene<'_>, [left, base]: [f64; 2]) -> f6
         sample.draw(ink, x, base);
         let start = [x + sample.width() + 3.5, base];
         ink.text(start, Anchor::Start, &words, SMALL);
-        x += extent + 11.0;
+        x += extent + 8.0;
     }
     base
 }

@@ -48,12 +48,7 @@ pub fn seats(anchors: &[f64], widths: &[f64], edges: [f64; 2]) -> Option<Vec<Sea
     best.map(|(_, seats)| seats)
 }
 
-fn seats_in(
-    rows: usize,
-    anchors: &[f64],
-    widths: &[f64],
-    edges: [f64; 2],
-) -> Option<Vec<Seat>> {
+fn seats_in(rows: usize, anchors: &[f64], widths: &[f64], edges: [f64; 2]) -> Option<Vec<Seat>> {
     let mut seats: Vec<Seat> = (0..anchors.len())
         .map(|i| Seat {
             row: i % rows,
@@ -99,7 +94,10 @@ fn spread(wanted: &[f64], rooms: &[f64], [low, high]: [f64; 2]) -> Option<Vec<f6
                 break;
             }
             let count = n + pool.1;
-            pool = ((mean * n as f64 + pool.0 * pool.1 as f64) / count as f64, count);
+            pool = (
+                (mean * n as f64 + pool.0 * pool.1 as f64) / count as f64,
+                count,
+            );
             pools.pop();
         }
         pools.push(pool);
@@ -151,7 +149,11 @@ impl Skyline {
             let (first, last) = (self.column(a[0].min(b[0])), self.column(a[0].max(b[0])));
             for column in first..=last {
                 let x = self.left + (column as f64 + 0.5) * COLUMN;
-                let share = if b[0] == a[0] { 0.0 } else { (x - a[0]) / (b[0] - a[0]) };
+                let share = if b[0] == a[0] {
+                    0.0
+                } else {
+                    (x - a[0]) / (b[0] - a[0])
+                };
                 let y = a[1] + share.clamp(0.0, 1.0) * (b[1] - a[1]);
                 self.tops[column] = self.tops[column].min(y);
             }
@@ -233,7 +235,9 @@ impl<'a> Percher<'a> {
                 let crossed = self.taken.iter().filter(|r| overlap(r, &line)).count();
                 cost += 1000.0 * crossed as f64 + 4.0;
             }
-            let covered = keep_off.iter().filter(|k| left - 1.0 < **k && **k < right + 1.0);
+            let covered = keep_off
+                .iter()
+                .filter(|k| left - 1.0 < **k && **k < right + 1.0);
             cost += 200.0 * covered.count() as f64;
             if best.as_ref().is_none_or(|(least, _)| cost < *least) {
                 best = Some((cost, Perch { bounds, leader }));
@@ -313,7 +317,10 @@ mod tests {
     #[test]
     fn a_label_with_room_stands_over_its_anchor() {
         let seats = seats(&[100.0, 300.0], &[40.0, 40.0], [46.0, 498.0]).unwrap();
-        assert_eq!(seats.iter().map(|s| (s.row, s.path[0])).collect::<Vec<_>>(), [(0, 100.0), (0, 300.0)]);
+        assert_eq!(
+            seats.iter().map(|s| (s.row, s.path[0])).collect::<Vec<_>>(),
+            [(0, 100.0), (0, 300.0)]
+        );
         let skyline = Skyline::new([46.0, 498.0], 200.0);
         let perch = Percher::new(&skyline, [46.0, 498.0]).perch(100.0, [10.0, 8.0], &[]);
         assert_eq!(perch.bounds, [95.0, 189.5, 105.0, 197.5]);

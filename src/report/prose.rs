@@ -66,7 +66,10 @@ pub fn fit_notes(undetermined: &[String], correlations: &[CorrelatedPair]) -> Ve
     notes.extend(correlations.iter().map(|c| {
         let sign = if c.correlation < 0.0 { "−" } else { "+" };
         let size = c.correlation.abs();
-        format!("{} and {} can hardly be told apart (correlation {sign}{size:.2}).", c.first, c.second)
+        format!(
+            "{} and {} can hardly be told apart (correlation {sign}{size:.2}).",
+            c.first, c.second
+        )
     }));
     notes
 }
@@ -75,7 +78,8 @@ pub fn fit_notes(undetermined: &[String], correlations: &[CorrelatedPair]) -> Ve
 pub fn shift(dossier: &Dossier) -> String {
     let a = &dossier.assignment;
     if dossier.matches.is_empty() {
-        return "No computed state was matched, so the computed energies stand unshifted.".to_owned();
+        return "No computed state was matched, so the computed energies stand unshifted."
+            .to_owned();
     }
     format!(
         "Computed energies were brought onto the measured ones by I = {:.3} × I(computed) {} {:.2} eV \
@@ -127,7 +131,11 @@ pub fn summary(dossier: &Dossier) -> String {
         "The trace shows {}; {} of them {} matched to {} of {} computed at {}.",
         counted(dossier.bands.len(), "band"),
         dossier.matches.len(),
-        if dossier.matches.len() == 1 { "is" } else { "are" },
+        if dossier.matches.len() == 1 {
+            "is"
+        } else {
+            "are"
+        },
         counted(states, "hole state"),
         dossier.levels.molecule.formula,
         dossier.levels.level,
@@ -139,7 +147,10 @@ pub fn summary(dossier: &Dossier) -> String {
         .map(|m| format!("band {} ({})", m.band, percent(m.probability)))
         .collect();
     if !doubtful.is_empty() {
-        out.push_str(&format!(" Less than 90 % certain: {}.", doubtful.join(", ")));
+        out.push_str(&format!(
+            " Less than 90 % certain: {}.",
+            doubtful.join(", ")
+        ));
     } else if let Some(least) = dossier
         .matches
         .iter()
@@ -151,10 +162,10 @@ pub fn summary(dossier: &Dossier) -> String {
             percent(least.probability)
         ));
     }
-    if !dossier.remarks.is_empty() {
-        let remarks = counted(dossier.remarks.len(), "feature");
-        let verb = if dossier.remarks.len() == 1 { "calls" } else { "call" };
-        out.push_str(&format!(" {} {verb} for a remark.", capital(&remarks)));
+    match dossier.remarks.len() {
+        0 => {}
+        1 => out.push_str(" There is one remark."),
+        n => out.push_str(&format!(" There are {n} remarks.")),
     }
     out
 }

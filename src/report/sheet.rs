@@ -66,33 +66,40 @@ pub fn assignment_csv(dossier: &Dossier) -> Result<String, ReportError> {
         let causes = remarks.iter().flat_map(|r| &r.candidates);
         let causes = causes.map(|c| format!("{} {}", c.cause, c.probability));
         let characters = found.iter().flat_map(|m| &m.character);
-        written(writer.write_record([
-            band.id.to_string(),
-            band.vertical_ev.to_string(),
-            band.vertical_sd.to_string(),
-            band.maximum_ev.to_string(),
-            optional(band.origin_ev),
-            band.area.to_string(),
-            band.area_sd.to_string(),
-            band.fwhm_ev.to_string(),
-            band.members.len().to_string(),
-            optional(band.spacing_ev),
-            found.map_or(String::new(), |m| m.hole_states.join("; ")),
-            each(|s| s.ionization_energy_ev.to_string()),
-            each(|s| s.koopmans_ev.to_string()),
-            each(|s| s.pole_strength.to_string()),
-            each(|s| s.degeneracy.to_string()),
-            optional(found.map(|m| m.residual_raw_ev)),
-            optional(found.map(|m| m.residual_ev)),
-            list(characters.clone().map(|c| c.verdict.to_string()).collect()),
-            list(characters.map(character).collect()),
-            optional(found.map(|m| m.probability)),
-            list(alternatives.collect()),
-            list(remarks.iter().map(|r| remark_kind(r.kind).to_owned()).collect()),
-            list(causes.collect()),
-            list(remarks.iter().map(|r| r.text.clone()).collect()),
-            dossier.levels.level.to_string(),
-        ]))?;
+        written(
+            writer.write_record([
+                band.id.to_string(),
+                band.vertical_ev.to_string(),
+                band.vertical_sd.to_string(),
+                band.maximum_ev.to_string(),
+                optional(band.origin_ev),
+                band.area.to_string(),
+                band.area_sd.to_string(),
+                band.fwhm_ev.to_string(),
+                band.members.len().to_string(),
+                optional(band.spacing_ev),
+                found.map_or(String::new(), |m| m.hole_states.join("; ")),
+                each(|s| s.ionization_energy_ev.to_string()),
+                each(|s| s.koopmans_ev.to_string()),
+                each(|s| s.pole_strength.to_string()),
+                each(|s| s.degeneracy.to_string()),
+                optional(found.map(|m| m.residual_raw_ev)),
+                optional(found.map(|m| m.residual_ev)),
+                list(characters.clone().map(|c| c.verdict.to_string()).collect()),
+                list(characters.map(character).collect()),
+                optional(found.map(|m| m.probability)),
+                list(alternatives.collect()),
+                list(
+                    remarks
+                        .iter()
+                        .map(|r| remark_kind(r.kind).to_owned())
+                        .collect(),
+                ),
+                list(causes.collect()),
+                list(remarks.iter().map(|r| r.text.clone()).collect()),
+                dossier.levels.level.to_string(),
+            ]),
+        )?;
     }
     let bytes = writer.into_inner().map_err(|e| failed(e.to_string()))?;
     String::from_utf8(bytes).map_err(|e| failed(e.to_string()))

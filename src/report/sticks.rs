@@ -1,10 +1,10 @@
 //! The computed half of the figure: shifted sticks with their labels, and how far they moved.
 
+use super::OverlayStick;
 use super::canvas::{Anchor, Canvas, Ink, Type, width};
 use super::figure::{BLACK, PALE, SMALL, SOFT, Scene, TEXT};
 use super::place::{Seat, seats};
 use super::words::{Words, orbital};
-use super::OverlayStick;
 
 const ROW_HEIGHT: f64 = 19.0;
 const STICK_HEIGHT: f64 = 42.0;
@@ -25,7 +25,12 @@ pub fn draw(ink: &mut Canvas, scene: &Scene<'_>, top: f64) -> f64 {
         .iter()
         .filter(|s| scene.x.holds(s.shifted_ev))
         .collect();
-    shown.sort_by(|a, b| scene.x.at(a.shifted_ev).total_cmp(&scene.x.at(b.shifted_ev)));
+    shown.sort_by(|a, b| {
+        scene
+            .x
+            .at(a.shifted_ev)
+            .total_cmp(&scene.x.at(b.shifted_ev))
+    });
     let texts: Vec<[Words; 2]> = shown
         .iter()
         .map(|s| [orbital(&s.label), Words::from(s.verdict.to_string())])
@@ -43,7 +48,9 @@ pub fn draw(ink: &mut Canvas, scene: &Scene<'_>, top: f64) -> f64 {
     let head = top + 3.0 + ROW_HEIGHT * rows as f64;
     let elbow = head + SLANT;
     let foot = elbow + 3.0 + STICK_HEIGHT;
-    let moved = shown.iter().any(|s| (s.shifted_ev - s.computed_ev).abs() > 1e-6);
+    let moved = shown
+        .iter()
+        .any(|s| (s.shifted_ev - s.computed_ev).abs() > 1e-6);
     let bottom = match moved {
         true => foot + JOIN + RAW_TICK,
         false => foot,
@@ -51,17 +58,18 @@ pub fn draw(ink: &mut Canvas, scene: &Scene<'_>, top: f64) -> f64 {
     if scene.is_measured() {
         predicted(ink, scene, foot);
     }
+    let thick = if shown.len() > 40 { 1.0 } else { 2.2 };
     let tallest = shown.iter().map(|s| s.height).fold(0.0, f64::max);
     for (i, stick) in shown.iter().enumerate() {
         let x = anchors[i];
         let tip = foot - STICK_HEIGHT * stick.height / tallest;
         match stick.band {
-            Some(band) => ink.line(&[[x, foot], [x, tip]], scene.ink(band), 2.2),
+            Some(band) => ink.line(&[[x, foot], [x, tip]], scene.ink(band), thick),
             None if scene.is_measured() => {
                 let grey = PALE.darker(0.7);
-                ink.dashed(&[[x, foot], [x, tip]], grey, 1.6, 3.0, 2.0);
+                ink.dashed(&[[x, foot], [x, tip]], grey, 0.75 * thick, 3.0, 2.0);
             }
-            None => ink.line(&[[x, foot], [x, tip]], BLACK.at(0.75), 2.0),
+            None => ink.line(&[[x, foot], [x, tip]], BLACK.at(0.75), thick),
         }
         if moved {
             join(ink, scene, stick, [foot, bottom]);
@@ -78,7 +86,10 @@ pub fn draw(ink: &mut Canvas, scene: &Scene<'_>, top: f64) -> f64 {
         }
     }
     if placed.is_none() {
-        let note = Words::from(format!("{} states: their labels stand in the table", shown.len()));
+        let note = Words::from(format!(
+            "{} states: their labels stand in the table",
+            shown.len()
+        ));
         let middle = 0.5 * (left + right);
         ink.text([middle, top + 12.0], Anchor::Middle, &note, SMALL);
     }
@@ -116,7 +127,11 @@ fn join(ink: &mut Canvas, scene: &Scene<'_>, stick: &OverlayStick, [foot, bottom
     let (from, to) = (scene.x.at(stick.shifted_ev), scene.x.at(stick.computed_ev));
     let tick = bottom - RAW_TICK;
     let end = to.clamp(left, right);
-    let share = if to == from { 1.0 } else { (end - from) / (to - from) };
+    let share = if to == from {
+        1.0
+    } else {
+        (end - from) / (to - from)
+    };
     let line = [[from, foot], [end, foot + share * (tick - foot)]];
     ink.line(&line, SOFT.at(0.55), 0.4);
     if scene.x.holds(stick.computed_ev) {
@@ -129,7 +144,11 @@ fn predicted(ink: &mut Canvas, scene: &Scene<'_>, foot: f64) {
     let Some(curve) = &scene.overlay.predicted else {
         return;
     };
-    let inside = curve.energy_ev.iter().zip(&curve.intensity).filter(|(e, _)| scene.x.holds(**e));
+    let inside = curve
+        .energy_ev
+        .iter()
+        .zip(&curve.intensity)
+        .filter(|(e, _)| scene.x.holds(**e));
     let highest = inside.clone().map(|(_, v)| *v).fold(0.0, f64::max);
     if highest <= 0.0 {
         return;

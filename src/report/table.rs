@@ -147,8 +147,16 @@ mod tests {
     use super::*;
 
     fn table() -> Table {
-        let mut table = Table::new(&[("Band", Lean::Right), ("State", Lean::Left), ("x", Lean::Left)]);
-        table.row(vec!["1".into(), super::super::words::orbital("2b1"), "".into()]);
+        let mut table = Table::new(&[
+            ("Band", Lean::Right),
+            ("State", Lean::Left),
+            ("x", Lean::Left),
+        ]);
+        table.row(vec![
+            "1".into(),
+            super::super::words::orbital("2b1"),
+            "".into(),
+        ]);
         table.row(vec!["12".into(), "a|b".into(), "".into()]);
         table
     }
@@ -156,12 +164,18 @@ mod tests {
     #[test]
     fn three_faces() {
         let table = table().without_empty_columns();
-        assert_eq!(table.text(), "Band  State\n────  ─────\n   1  2b1\n  12  a|b\n");
+        assert_eq!(
+            table.text(),
+            "Band  State\n────  ─────\n   1  2b1\n  12  a|b\n"
+        );
         assert_eq!(
             table.markdown(),
             "| Band | State |\n| ---: | :--- |\n| 1 | 2b1 |\n| 12 | a\\|b |\n"
         );
         let html = table.html().into_string();
-        assert!(html.contains("<td class=\"text\">2b<sub>1</sub></td>"), "{html}");
+        assert!(
+            html.contains("<td class=\"text\">2b<sub>1</sub></td>"),
+            "{html}"
+        );
     }
 }

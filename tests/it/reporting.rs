@@ -5,7 +5,7 @@
 mod invented;
 
 use bandproof::report::{
-    self, BandCurve, Direction, Dossier, Figure, Heading, Overlay, ReportError, TextBox,
+    self, BandCurve, Direction, Dossier, Figure, FitSummary, Heading, Overlay, ReportError, TextBox,
 };
 use invented::{crowded, dense, empty, large, one_band, sulfide};
 use std::path::Path;
@@ -29,7 +29,10 @@ fn overlap(a: &TextBox, b: &TextBox) -> bool {
 fn check(name: &str, figure: &Figure) {
     keep(name, figure);
     let tree = usvg::Tree::from_str(figure.svg(), &usvg::Options::default()).unwrap();
-    assert!(!figure.svg().contains("<text"), "{name}: letters are not outlined");
+    assert!(
+        !figure.svg().contains("<text"),
+        "{name}: letters are not outlined"
+    );
     let pt = 72.0 / 96.0;
     let (width, height) = (tree.size().width() * pt, tree.size().height() * pt);
     assert!((width - 510.24).abs() < 0.1, "{name}: {width} pt wide");
@@ -43,7 +46,12 @@ fn check(name: &str, figure: &Figure) {
             a.text,
             a.bounds
         );
-        assert!(a.size >= 7.0, "{name}: '{}' is set in {} pt", a.text, a.size);
+        assert!(
+            a.size >= 7.0,
+            "{name}: '{}' is set in {} pt",
+            a.text,
+            a.size
+        );
         for b in &texts[i + 1..] {
             assert!(
                 !overlap(a, b),
@@ -96,7 +104,10 @@ fn bands_and_predictions_have_figures_of_their_own() {
         bands: Vec::new(),
         ..alone
     };
-    check("trace_alone", &Figure::new(&heading, &unfitted, &[], &[]).unwrap());
+    check(
+        "trace_alone",
+        &Figure::new(&heading, &unfitted, &[], &[]).unwrap(),
+    );
     let prediction = Overlay {
         sticks: dossier.overlay.sticks.clone(),
         predicted: dossier.overlay.predicted.clone(),
@@ -130,7 +141,9 @@ fn texts_are_where_the_figure_says() {
     let letters = "<svg xmlns='http://www.w3.org/2000/svg' width='400' height='40'>\
                    <text x='10' y='20' font-family='DejaVu Sans' font-size='7.5'>Ionization energy (eV) σπ′₂</text></svg>";
     let mut options = usvg::Options::default();
-    options.fontdb_mut().load_font_data(dejavu::sans::regular().to_vec());
+    options
+        .fontdb_mut()
+        .load_font_data(dejavu::sans::regular().to_vec());
     let tree = usvg::Tree::from_str(letters, &options).unwrap();
     let drawn = f64::from(tree.root().bounding_box().width());
     let mut dossier = one_band();
@@ -138,7 +151,11 @@ fn texts_are_where_the_figure_says() {
     dossier.matches[0].hole_states[0] = "Ionization energy (eV) σπ′₂".to_owned();
     dossier.overlay.sticks[0].label = "Ionization energy (eV) σπ′₂".to_owned();
     let figure = Figure::of(&dossier).unwrap();
-    let found = figure.texts().iter().find(|t| t.text.ends_with("σπ′₂")).unwrap();
+    let found = figure
+        .texts()
+        .iter()
+        .find(|t| t.text.ends_with("σπ′₂"))
+        .unwrap();
     let said = found.bounds[2] - found.bounds[0];
     // Side bearings of the first and last letter, and kerning, make the difference.
     assert!((said - drawn).abs() < 1.5, "said {said}, drawn {drawn}");
@@ -152,15 +169,21 @@ fn every_letter_used_has_a_glyph() {
              font-family='DejaVu Sans' font-size='20'>{c}</text></svg>"
         );
         let mut options = usvg::Options::default();
-        options.fontdb_mut().load_font_data(dejavu::sans::regular().to_vec());
+        options
+            .fontdb_mut()
+            .load_font_data(dejavu::sans::regular().to_vec());
         let tree = usvg::Tree::from_str(&svg, &options).unwrap();
         tree.to_string(&usvg::WriteOptions::default())
     };
     // A code point that no font has: what is drawn for it is drawn for every missing letter.
     let missing = outline('\u{0378}');
-    for c in "σπδφΣΠΔΦβγαν′″†·−–…≥×±₀₁₂₃₄₅₆₇₈₉⁻¹²³ũ₊".chars() {
+    for c in "σπδφΣΠΔΦβγαν′″†·−–…≥×±₀₁₂₃₄₅₆₇₈₉⁻¹²³ũ₊".chars()
+    {
         let drawn = outline(c);
-        assert!(drawn != missing && drawn.contains("<path"), "no glyph for {c}");
+        assert!(
+            drawn != missing && drawn.contains("<path"),
+            "no glyph for {c}"
+        );
     }
 }
 
@@ -182,7 +205,10 @@ fn same(place: &str, a: &serde_json::Value, b: &serde_json::Value) {
         }
         (Number(a), Number(b)) => {
             let (a, b) = (a.as_f64().unwrap(), b.as_f64().unwrap());
-            assert!((a - b).abs() <= 2.0 * f64::EPSILON * b.abs(), "{place}: {a} and {b}");
+            assert!(
+                (a - b).abs() <= 2.0 * f64::EPSILON * b.abs(),
+                "{place}: {a} and {b}"
+            );
         }
         _ => assert_eq!(a, b, "{place}"),
     }
@@ -193,7 +219,11 @@ fn the_dossier_survives_json_and_has_the_schema_names() {
     for dossier in [sulfide(), crowded(), one_band(), empty()] {
         let text = serde_json::to_string(&dossier).unwrap();
         let back: Dossier = serde_json::from_str(&text).unwrap();
-        same("dossier", &serde_json::to_value(&back).unwrap(), &serde_json::to_value(&dossier).unwrap());
+        same(
+            "dossier",
+            &serde_json::to_value(&back).unwrap(),
+            &serde_json::to_value(&dossier).unwrap(),
+        );
     }
     let value = serde_json::to_value(crowded()).unwrap();
     assert_eq!(value["schema"], "bandproof/dossier/1");
@@ -206,14 +236,27 @@ fn the_dossier_survives_json_and_has_the_schema_names() {
     has(
         &value["bands"][0],
         &[
-            "id", "vertical_ev", "vertical_sd", "maximum_ev", "origin_ev", "area", "area_sd",
-            "fwhm_ev", "members",
+            "id",
+            "vertical_ev",
+            "vertical_sd",
+            "maximum_ev",
+            "origin_ev",
+            "area",
+            "area_sd",
+            "fwhm_ev",
+            "members",
         ],
     );
     has(&value["bands"][0]["members"][0], &["position_ev", "area"]);
     has(
         &value["matches"][0],
-        &["band", "hole_states", "probability", "character", "evidence"],
+        &[
+            "band",
+            "hole_states",
+            "probability",
+            "character",
+            "evidence",
+        ],
     );
     has(
         &value["remarks"][0],
@@ -241,22 +284,37 @@ fn all_outputs_are_written_and_are_what_they_say() {
         report::write(&crowded(), &Path::new(&kept).join("crowded_report")).unwrap();
         report::write(&one_band(), &Path::new(&kept).join("one_band_report")).unwrap();
     }
-    let names: Vec<_> = paths.iter().map(|p| p.file_name().unwrap().to_str().unwrap()).collect();
+    let names: Vec<_> = paths
+        .iter()
+        .map(|p| p.file_name().unwrap().to_str().unwrap())
+        .collect();
     assert_eq!(
         names,
         [
-            "dossier.json", "assignment.csv", "assignment.md", "overlay.svg", "overlay.png",
-            "overlay.pdf", "page.html"
+            "dossier.json",
+            "assignment.csv",
+            "assignment.md",
+            "overlay.svg",
+            "overlay.png",
+            "overlay.pdf",
+            "page.html"
         ]
     );
-    assert_eq!(std::fs::read_dir(&folder).unwrap().count(), 7, "something else is left there");
+    assert_eq!(
+        std::fs::read_dir(&folder).unwrap().count(),
+        7,
+        "something else is left there"
+    );
     let read = |name: &str| std::fs::read(folder.join(name)).unwrap();
     let json: Dossier = serde_json::from_slice(&read("dossier.json")).unwrap();
     assert_eq!(json.bands.len(), dossier.bands.len());
     let png = read("overlay.png");
     assert_eq!(&png[..8], b"\x89PNG\r\n\x1a\n");
     let pixels = u32::from_be_bytes(png[16..20].try_into().unwrap());
-    assert!((2125..=2127).contains(&pixels), "{pixels} pixels wide: 180 mm at 300 dpi are 2126");
+    assert!(
+        (2125..=2127).contains(&pixels),
+        "{pixels} pixels wide: 180 mm at 300 dpi are 2126"
+    );
     let pdf = read("overlay.pdf");
     assert!(pdf.starts_with(b"%PDF-1."));
     let pages = pdf.windows(10).filter(|w| w == b"/Type/Page").count();
@@ -289,7 +347,10 @@ fn nothing_is_left_when_a_file_cannot_be_written() {
         .collect();
     left.sort();
     assert_eq!(left, ["assignment.csv", "page.html"]);
-    assert_eq!(std::fs::read(folder.join("assignment.csv")).unwrap(), b"from before");
+    assert_eq!(
+        std::fs::read(folder.join("assignment.csv")).unwrap(),
+        b"from before"
+    );
     // A file stands where the folder would be.
     let file = parent.path().join("file");
     std::fs::write(&file, "x").unwrap();
@@ -303,24 +364,51 @@ fn a_dossier_that_does_not_fit_together_is_refused_before_anything_is_made() {
     let parent = tempfile::tempdir().unwrap();
     let folder = parent.path().join("results");
     type Damage = fn(&mut Dossier);
-    let damages: [(Damage, &str); 8] = [
+    let damages: [(Damage, &str); 9] = [
         (|d| d.overlay.fit.truncate(3), "overlay.fit: 3 values"),
-        (|d| d.overlay.intensity[4] = f64::NAN, "overlay.intensity: NaN"),
-        (|d| d.overlay.energy_ev.swap(1, 2), "overlay.energy_ev: energies do not rise"),
         (
-            |d| d.overlay.bands.push(BandCurve { band: 2, intensity: vec![1.0] }),
+            |d| d.overlay.intensity[4] = f64::NAN,
+            "overlay.intensity: NaN",
+        ),
+        (
+            |d| d.overlay.energy_ev.swap(1, 2),
+            "overlay.energy_ev: energies do not rise",
+        ),
+        (
+            |d| {
+                d.overlay.bands.push(BandCurve {
+                    band: 2,
+                    intensity: vec![1.0],
+                })
+            },
             "overlay.bands, band 2: 1 values",
         ),
-        (|d| d.overlay.sticks[0].height = 0.0, "height 0 is not positive"),
-        (|d| d.matches[0].band = 77, "matches[0]: there is no band 77"),
-        (|d| d.matches[0].hole_states[0] = "9z".to_owned(), "there is no hole state '9z'"),
+        (
+            |d| d.overlay.sticks[0].height = 0.0,
+            "height 0 is not positive",
+        ),
+        (
+            |d| d.matches[0].band = 77,
+            "matches[0]: there is no band 77",
+        ),
+        (
+            |d| d.matches[0].hole_states[0] = "9z".to_owned(),
+            "there is no hole state '9z'",
+        ),
         (|d| d.bands[0].vertical_sd = f64::INFINITY, "bands[0]: inf"),
+        (
+            |d| d.matches[0].evidence[0].weight = f64::NAN,
+            "dossier.json could not be made",
+        ),
     ];
     for (damage, message) in damages {
         let mut dossier = sulfide();
         damage(&mut dossier);
         let error = report::write(&dossier, &folder).unwrap_err();
-        assert!(error.to_string().contains(message), "'{error}' lacks '{message}'");
+        assert!(
+            error.to_string().contains(message),
+            "'{error}' lacks '{message}'"
+        );
         assert!(!folder.exists());
     }
 }
@@ -330,7 +418,12 @@ fn other_endings_are_refused() {
     let folder = tempfile::tempdir().unwrap();
     let figure = Figure::of(&one_band()).unwrap();
     let error = report::write_figure(&figure, &folder.path().join("a.jpg")).unwrap_err();
-    assert!(error.to_string().contains("should end in .svg, .png or .pdf"), "{error}");
+    assert!(
+        error
+            .to_string()
+            .contains("should end in .svg, .png or .pdf"),
+        "{error}"
+    );
     assert_eq!(std::fs::read_dir(folder.path()).unwrap().count(), 0);
 }
 
@@ -356,7 +449,10 @@ fn the_csv_has_one_row_per_band_with_full_numbers() {
             None => assert_eq!(&row[column("hole_states")], ""),
         }
     }
-    assert!(rows.iter().any(|r| r[column("remark_causes")].starts_with("H2O X")));
+    assert!(
+        rows.iter()
+            .any(|r| r[column("remark_causes")].starts_with("H2O X"))
+    );
 }
 
 #[test]
@@ -378,7 +474,10 @@ fn the_report_says_which_energy_is_which() {
         assert_eq!(links, names, "the page asks for something from elsewhere");
     }
     let md = report::assignment_md(&sulfide());
-    assert!(md.starts_with("# Photoelectron bands of hydrogen sulfide (H₂S)\n"), "{md}");
+    assert!(
+        md.starts_with("# Photoelectron bands of hydrogen sulfide (H₂S)\n"),
+        "{md}"
+    );
     assert!(md.contains("| 1 | 10.498 ± 0.002 |"), "{md}");
 }
 
@@ -396,6 +495,18 @@ fn text_from_outside_cannot_break_the_page() {
 }
 
 #[test]
+fn the_summary_of_a_fit_keeps_its_odds() {
+    let dossier = crowded();
+    let fit = invented::fit_of(&dossier);
+    let summary = FitSummary::of(&fit);
+    let odds: Vec<f64> = summary.groupings.iter().map(|g| g.probability).collect();
+    assert_eq!(odds, [0.83, 0.17]);
+    assert_eq!(summary.groupings[0].vertical_ev.len(), 11);
+    assert_eq!(summary.groupings[1].vertical_ev.len(), 10);
+    assert_eq!(summary.statistics, fit.statistics);
+}
+
+#[test]
 fn terminal_tables_are_aligned() {
     let dossier = crowded();
     let levels = report::levels_table(&dossier.levels);
@@ -405,10 +516,16 @@ fn terminal_tables_are_aligned() {
     let lines: Vec<&str> = bands.lines().take(2 + dossier.bands.len()).collect();
     assert!(lines[0].starts_with("Band   Vertical / eV"), "{bands}");
     let end = lines[1].chars().count();
-    assert!(lines[2..].iter().all(|l| l.chars().count() <= end), "{bands}");
+    assert!(
+        lines[2..].iter().all(|l| l.chars().count() <= end),
+        "{bands}"
+    );
     let assignment = report::assignment_table(&dossier);
     assert!(assignment.contains("† H2O X (000)"), "{assignment}");
     if std::env::var_os("BANDPROOF_FIGURES").is_some() {
-        println!("{levels}\n{bands}\n{assignment}\n{}", report::assignment_md(&dossier));
+        println!(
+            "{levels}\n{bands}\n{assignment}\n{}",
+            report::assignment_md(&dossier)
+        );
     }
 }

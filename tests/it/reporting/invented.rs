@@ -1,8 +1,7 @@
 //! Invented dossiers: shapes and numbers are plausible, nothing in them was measured.
 
-use bandproof::assign::{
-    Alternative, Candidate, Evidence, Match, Remark, RemarkKind, Stance,
-};
+use Verdict::{Antibonding, Bonding, LonePair, Mixed, Nonbonding};
+use bandproof::assign::{Alternative, Candidate, Evidence, Match, Remark, RemarkKind, Stance};
 use bandproof::fit::{Band, BandFit, CorrelatedPair, FitStatistics, Grouping, Member, Peak};
 use bandproof::levels::{
     self, AtomLine, AtomShare, BondShare, Character, HoleState, Level, Levels, LineKind, Method,
@@ -16,7 +15,6 @@ use bandproof::trace::{Axis, Noise};
 use rand::SeedableRng;
 use rand_chacha::ChaCha8Rng;
 use rand_distr::{Distribution, Poisson};
-use Verdict::{Antibonding, Bonding, LonePair, Mixed, Nonbonding};
 
 /// A band to invent: members (energy, area), width of each.
 struct Shape {
@@ -64,9 +62,13 @@ impl Shape {
     }
 
     fn maximum(&self) -> f64 {
-        let (low, high) = (self.members[0].0 - 0.2, self.members[self.members.len() - 1].0 + 0.2);
+        let (low, high) = (
+            self.members[0].0 - 0.2,
+            self.members[self.members.len() - 1].0 + 0.2,
+        );
         let grid = (0..=2000).map(|i| low + (high - low) * f64::from(i) / 2000.0);
-        grid.max_by(|a, b| self.at(*a).total_cmp(&self.at(*b))).unwrap()
+        grid.max_by(|a, b| self.at(*a).total_cmp(&self.at(*b)))
+            .unwrap()
     }
 }
 
@@ -146,10 +148,17 @@ impl Recipe {
             .collect();
         let counts: Vec<f64> = total
             .iter()
-            .map(|t| Poisson::new((t * self.exposure).max(1e-3)).unwrap().sample(&mut rng))
+            .map(|t| {
+                Poisson::new((t * self.exposure).max(1e-3))
+                    .unwrap()
+                    .sample(&mut rng)
+            })
             .collect();
         let intensity: Vec<f64> = counts.iter().map(|c| c / self.exposure).collect();
-        let intensity_sd: Vec<f64> = counts.iter().map(|c| c.max(1.0).sqrt() / self.exposure).collect();
+        let intensity_sd: Vec<f64> = counts
+            .iter()
+            .map(|c| c.max(1.0).sqrt() / self.exposure)
+            .collect();
         let residual = (0..counts.len())
             .map(|i| {
                 let expected = total[i] * self.exposure;
@@ -189,16 +198,25 @@ impl Recipe {
                 origin_ev: resolved.then(|| shape.members[0].0),
                 area: shape.area(),
                 area_sd: shape.area().sqrt(),
-                fwhm_ev: if resolved { 4.0 * shape.fwhm } else { shape.fwhm },
+                fwhm_ev: if resolved {
+                    4.0 * shape.fwhm
+                } else {
+                    shape.fwhm
+                },
                 spacing_ev: resolved.then(|| shape.members[1].0 - shape.members[0].0),
                 significance: 300.0,
+                peaks: members.iter().map(|m: &Member| m.peak).collect(),
                 members,
             });
         }
         let move_to = |e: f64| self.scale * e + self.shift;
         let mut matches: Vec<Match> = Vec::new();
         for band in &bands {
-            let shown: Vec<_> = self.states.iter().filter(|s| s.4 == Some(band.id)).collect();
+            let shown: Vec<_> = self
+                .states
+                .iter()
+                .filter(|s| s.4 == Some(band.id))
+                .collect();
             if shown.is_empty() {
                 continue;
             }
@@ -260,7 +278,12 @@ impl Recipe {
         let predicted = PredictedCurve {
             intensity: grid
                 .iter()
-                .map(|x| self.states.iter().map(|s| profile(*x, move_to(s.1), 1.0, 0.45)).sum())
+                .map(|x| {
+                    self.states
+                        .iter()
+                        .map(|s| profile(*x, move_to(s.1), 1.0, 0.45))
+                        .sum()
+                })
                 .collect(),
             energy_ev: grid,
         };
@@ -276,7 +299,10 @@ impl Recipe {
                 verdict: s.2,
             })
             .collect();
-        let unseen = self.states.iter().filter(|s| s.4.is_none() && move_to(s.1) < 20.0);
+        let unseen = self
+            .states
+            .iter()
+            .filter(|s| s.4.is_none() && move_to(s.1) < 20.0);
         let unseen = unseen.map(|s| s.0.clone()).collect();
         let verticals = bands.iter().map(|b| b.vertical_ev).collect();
         Dossier {
@@ -600,7 +626,13 @@ pub fn large(states: usize) -> Dossier {
             let share = i as f64 / states as f64;
             let energy = 9.0 + 12.0 * share.sqrt() + 0.3 * (i as f64 * 1.7).sin();
             let label = format!("orbital {}", 2 * states - i);
-            (label, energy, verdicts[i % 5], String::new(), Some(1 + (i * 12) / states))
+            (
+                label,
+                energy,
+                verdicts[i % 5],
+                String::new(),
+                Some(1 + (i * 12) / states),
+            )
         })
         .collect();
     Recipe {
@@ -611,7 +643,13 @@ pub fn large(states: usize) -> Dossier {
         unit: "counts",
         background: |_| 300.0,
         shapes: (0..12)
-            .map(|i| line(8.2 + 0.9 * f64::from(i), 900.0 + 90.0 * f64::from(i % 4), 0.7))
+            .map(|i| {
+                line(
+                    8.2 + 0.9 * f64::from(i),
+                    900.0 + 90.0 * f64::from(i % 4),
+                    0.7,
+                )
+            })
             .collect(),
         states: many,
         scale: 0.9,
@@ -638,6 +676,8 @@ pub fn fit_of(dossier: &Dossier) -> BandFit {
         ],
         background: dossier.overlay.background.clone(),
         total: dossier.overlay.fit.clone(),
+        residuals: dossier.overlay.residual.clone(),
+        window_ev: dossier.trace.span_ev,
         statistics: dossier.fit.statistics.clone(),
         undetermined: dossier.fit.undetermined.clone(),
         correlations: dossier.fit.correlations.clone(),
