@@ -9,13 +9,20 @@
 
 use super::background::{Background, End, HIGHEST_DEGREE};
 use super::channels::Channels;
-use super::model::{Line, Model, PER_LINE, Parameters, Selection};
+use super::model::{Line, Model, PER_LINE, Parameters, Selection, value_and_gradient};
 use super::scan::{Candidate, Widths, blobs, residue};
 use super::solver::{Solution, SolverOptions, run};
 use super::{FitError, FitOptions, FitStep, Stage};
+use nalgebra::{Matrix4, Vector4};
 
 /// Least gain over its price before the background is made more flexible.
 const BACKGROUND_MARGIN: f64 = 4.0;
+
+/// The same for a Lorentzian part of a line.
+const WING_MARGIN: f64 = 6.0;
+
+/// A line that stands out of the noise by this many standard deviations shows the resolution.
+const PROMINENT: f64 = 10.0;
 
 pub(super) struct Builder<'a> {
     pub data: &'a Channels,
@@ -53,6 +60,7 @@ impl<'a> Builder<'a> {
         let mut parameters = self.seed()?;
         self.tell(Stage::Candidates, &parameters);
         for round in 0..12 {
+            self.free_wings(&mut parameters);
             let flexible = self.improve_background(&mut parameters)?;
             let added = self.add(&mut parameters)?;
             if added == 0 && !flexible {
@@ -61,8 +69,9 @@ impl<'a> Builder<'a> {
             self.settle(&mut parameters)?;
             self.tell(Stage::Added(round + 1), &parameters);
         }
-        self.judge_resolution(&parameters)?;
+        self.judge_resolution(&parameters);
         for _ in 0..4 {
+            self.free_wings(&mut parameters);
             self.settle(&mut parameters)?;
             let removed = self.remove(&mut parameters)?;
             self.settle(&mut parameters)?;
@@ -78,20 +87,18 @@ impl<'a> Builder<'a> {
 
     /// Learns the resolution from the narrowest line that is known well: anything much narrower
     /// is a quirk of a few channels.
-    fn judge_resolution(&mut self, parameters: &Parameters) -> Result<(), FitError> {
+    fn judge_resolution(&mut self, parameters: &Parameters) {
         if self.options.resolution_ev.is_some() {
-            return Ok(());
+            return;
         }
-        let selection = Selection::all(parameters, self.data);
-        let (fitted, solution) = self.fit(parameters, &selection, 1, 1.0)?;
-        let first = fitted.background.parameters();
-        let known = fitted.lines.iter().enumerate().filter(|(k, line)| {
-            let sd = |what: usize| solution.covariance.sd(first + PER_LINE * k + what);
-            line.area > 12.0 * sd(3) && line.gaussian > 12.0 * sd(1) && sd(1) > 0.0
-        });
-        let width = known.map(|(_, line)| line.fwhm()).min_by(f64::total_cmp);
-        self.narrowest = width.map_or(0.0, |w| 0.7 * w);
-        Ok(())
+        let expected = parameters.expected(self.data);
+        let width = parameters
+            .lines
+            .iter()
+            .filter(|line| self.prominence(line, &expected) > PROMINENT)
+            .map(Line::fwhm)
+            .min_by(f64::total_cmp);
+        self.narrowest = width.map_or(0.0, |w| 0.6 * w);
     }
 
     fn tell(&mut self, stage: Stage, parameters: &Parameters) {
@@ -151,10 +158,6 @@ impl<'a> Builder<'a> {
 
     /// Fits everything, loosely.
     fn settle(&self, parameters: &mut Parameters) -> Result<(), FitError> {
-        for line in &mut parameters.lines {
-            // From ratio 0 the gradient itself says whether wings are wanted.
-            line.voigt |= self.is_strong(line);
-        }
         let selection = Selection::all(parameters, self.data);
         let (fitted, _) = self.fit(parameters, &selection, 25, 0.1)?;
         *parameters = fitted;
@@ -169,15 +172,52 @@ impl<'a> Builder<'a> {
         Ok(())
     }
 
-    /// Whether a line carries enough counts for its wings to be seen.
-    fn is_strong(&self, line: &Line) -> bool {
-        let near = self
+    /// Gives a Lorentzian part to lines whose wings show in the residual: by the score that the
+    /// ratio would get, with the line's other parameters free to follow.
+    fn free_wings(&self, parameters: &mut Parameters) {
+        let data = self.data;
+        let expected = parameters.expected(data);
+        let least = ((data.len() as f64).ln() + WING_MARGIN).sqrt();
+        for line in &mut parameters.lines {
+            if line.voigt || line.area <= 0.0 {
+                continue;
+            }
+            let winged = Line {
+                voigt: true,
+                ..*line
+            };
+            let reach = winged.reach().min(4.0 * line.gaussian);
+            let mut information = Matrix4::zeros();
+            let mut slope = Vector4::zeros();
+            for i in data.range(line.position - reach, line.position + reach) {
+                let [v, centre, gaussian, ratio] =
+                    value_and_gradient(&winged, data.energy[i] - line.position);
+                let column = Vector4::new(
+                    line.area * centre,
+                    line.area * gaussian,
+                    v,
+                    line.area * ratio,
+                ) * data.exposure[i];
+                let variance = data.variance(i, expected[i]);
+                information += column * column.transpose() / variance;
+                slope += column * ((data.counts[i] - expected[i]) / variance);
+            }
+            // Step of the ratio over its standard deviation.
+            if let Some(inverse) = information.try_inverse() {
+                let step = (inverse * slope)[3];
+                line.voigt = step > least * inverse[(3, 3)].max(0.0).sqrt();
+            }
+        }
+    }
+
+    /// How far a line stands out of the noise under it, in standard deviations.
+    fn prominence(&self, line: &Line, expected: &[f64]) -> f64 {
+        let reach = 0.6 * line.fwhm();
+        let under = self
             .data
-            .range(line.position - line.gaussian, line.position + line.gaussian);
-        let noise: f64 = near
-            .map(|i| self.data.variance(i, self.data.counts[i].max(1.0)))
-            .sum();
-        line.area > 25.0 * noise.sqrt()
+            .range(line.position - reach, line.position + reach);
+        let variance: f64 = under.map(|i| self.data.variance(i, expected[i])).sum();
+        0.85 * line.area / variance.max(1.0).sqrt()
     }
 
     /// Runs the solver on a selection, moving the windows along until they fit the lines.

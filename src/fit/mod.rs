@@ -26,7 +26,7 @@ use serde::{Deserialize, Serialize};
 use thiserror::Error;
 
 /// What a fit may be told; everything has a default.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct FitOptions {
     /// Resolution of the instrument (FWHM), eV: no line is fitted narrower than 0.85 times this.
     pub resolution_ev: Option<f64>,
@@ -82,6 +82,19 @@ pub enum Stage {
     Converged,
     /// Lines were grouped into bands.
     Grouped,
+}
+
+impl std::fmt::Display for FitStep {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        match self.stage {
+            Stage::Candidates => write!(f, "candidates of the trace fitted")?,
+            Stage::Added(round) => write!(f, "lines added from the residual, round {round}")?,
+            Stage::Pruned => write!(f, "lines that do not pay taken out")?,
+            Stage::Converged => write!(f, "fit converged")?,
+            Stage::Grouped => write!(f, "lines grouped into bands")?,
+        }
+        write!(f, ": {} lines, χ² {:.1}", self.lines, self.chi_squared)
+    }
 }
 
 /// Why there is no fit.
@@ -161,6 +174,18 @@ pub struct BandFit {
     pub undetermined: Vec<String>,
     /// Pairs of parameters with |correlation| above 0.9.
     pub correlations: Vec<CorrelatedPair>,
+}
+
+impl FitError {
+    /// Whether the fit ran but found no minimum (rather than that the input was wrong).
+    pub fn is_not_converged(&self) -> bool {
+        matches!(
+            self,
+            FitError::Solver(
+                solver::SolverError::NotConverged(_) | solver::SolverError::Machinery(_)
+            )
+        )
+    }
 }
 
 impl BandFit {
