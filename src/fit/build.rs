@@ -18,6 +18,11 @@ use nalgebra::{Matrix4, Vector4};
 /// Least gain over its price before the background is made more flexible.
 const BACKGROUND_MARGIN: f64 = 4.0;
 
+/// What a line costs more inside another one: there it changes a shape, with all parameters of
+/// both to do so, and chance has more ways to be fitted (found on traces of two overlapping
+/// lines).
+const OVERLAP_PREMIUM: f64 = 8.0;
+
 /// The same for a Lorentzian part of a line.
 const WING_MARGIN: f64 = 6.0;
 
@@ -60,7 +65,9 @@ impl<'a> Builder<'a> {
         let mut parameters = self.seed()?;
         self.tell(Stage::Candidates, &parameters);
         for round in 0..12 {
-            self.free_wings(&mut parameters);
+            if self.free_wings(&mut parameters) {
+                self.settle(&mut parameters)?;
+            }
             let flexible = self.improve_background(&mut parameters)?;
             let added = self.add(&mut parameters)?;
             if added == 0 && !flexible {
@@ -173,8 +180,10 @@ impl<'a> Builder<'a> {
     }
 
     /// Gives a Lorentzian part to lines whose wings show in the residual: by the score that the
-    /// ratio would get, with the line's other parameters free to follow.
-    fn free_wings(&self, parameters: &mut Parameters) {
+    /// ratio would get, with the line's other parameters free to follow. Returns whether there
+    /// were any.
+    fn free_wings(&self, parameters: &mut Parameters) -> bool {
+        let mut any = false;
         let data = self.data;
         let expected = parameters.expected(data);
         let least = ((data.len() as f64).ln() + WING_MARGIN).sqrt();
@@ -206,8 +215,10 @@ impl<'a> Builder<'a> {
             if let Some(inverse) = information.try_inverse() {
                 let step = (inverse * slope)[3];
                 line.voigt = step > least * inverse[(3, 3)].max(0.0).sqrt();
+                any |= line.voigt;
             }
         }
+        any
     }
 
     /// How far a line stands out of the noise under it, in standard deviations.
@@ -257,6 +268,24 @@ impl<'a> Builder<'a> {
         }
     }
 
+    /// Fall of the deviance that line `k` has to be worth.
+    pub fn price_of(&self, parameters: &Parameters, k: usize) -> f64 {
+        let line = &parameters.lines[k];
+        let width = line.fwhm();
+        let overlaps = parameters.lines.iter().enumerate().any(|(j, other)| {
+            let other_width = other.fwhm();
+            j != k
+                && (other.position - line.position).abs() < 0.5 * (width + other_width)
+                && width < 3.0 * other_width
+                && other_width < 3.0 * width
+        });
+        if overlaps {
+            self.price + OVERLAP_PREMIUM
+        } else {
+            self.price
+        }
+    }
+
     /// Lines that a change at `position` over `width` disturbs, and the channels to compare.
     pub fn neighbourhood(&self, parameters: &Parameters, position: f64, width: f64) -> Selection {
         let (mut low, mut high) = (position - 2.0 * width, position + 2.0 * width);
@@ -300,7 +329,7 @@ impl<'a> Builder<'a> {
             let mut trial = parameters.clone();
             trial.lines.push(line_from(&c));
             let gain = self.try_change(parameters, &mut trial, c.position, c.fwhm)?;
-            if gain > self.price {
+            if gain > self.price_of(&trial, trial.lines.len() - 1) {
                 *parameters = trial;
                 added += 1;
             }
@@ -397,7 +426,7 @@ impl<'a> Builder<'a> {
     /// The fit without line `k`, where that costs less than the line's price.
     fn without(&self, parameters: &Parameters, k: usize) -> Result<Option<Parameters>, FitError> {
         let loss = self.loss_without(parameters, k)?;
-        Ok((loss.0 < self.price).then_some(loss.1))
+        Ok((loss.0 < self.price_of(parameters, k)).then_some(loss.1))
     }
 
     /// How much the deviance rises without line `k`, its neighbours fitted again.

@@ -50,7 +50,7 @@ impl Default for FitOptions {
             resolution_ev: None,
             window_ev: None,
             max_lines: 80,
-            background_degree: 3,
+            background_degree: 6,
             background_tail: true,
             false_alarm: 0.01,
             max_groupings: 8,
