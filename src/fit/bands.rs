@@ -37,7 +37,9 @@ pub fn fit_bands(
         for k in 0..parameters.lines.len() {
             let (loss, rest) = builder.loss_without(&parameters, k)?;
             significance.push(0.5 * loss.max(0.0));
-            if loss < builder.price && without.as_ref().is_none_or(|(l, _)| loss < *l) {
+            if loss < builder.price_of(&parameters, k)
+                && without.as_ref().is_none_or(|(l, _)| loss < *l)
+            {
                 without = Some((loss, rest));
             }
         }
@@ -140,7 +142,7 @@ fn converge(
         let model = Model::new(data, &parameters, selection);
         let options = SolverOptions {
             max_iterations: 400,
-            value_tolerance: 1e-11,
+            value_tolerance: 1e-9,
             ..SolverOptions::default()
         };
         let start = model.vector();

@@ -9,13 +9,25 @@
 
 use super::background::{Background, End, HIGHEST_DEGREE};
 use super::channels::Channels;
-use super::model::{Line, Model, PER_LINE, Parameters, Selection};
+use super::model::{Line, Model, PER_LINE, Parameters, Selection, value_and_gradient};
 use super::scan::{Candidate, Widths, blobs, residue};
 use super::solver::{Solution, SolverOptions, run};
 use super::{FitError, FitOptions, FitStep, Stage};
+use nalgebra::{Matrix4, Vector4};
 
 /// Least gain over its price before the background is made more flexible.
 const BACKGROUND_MARGIN: f64 = 4.0;
+
+/// What a line costs more inside another one: there it changes a shape, with all parameters of
+/// both to do so, and chance has more ways to be fitted (found on traces of two overlapping
+/// lines).
+const OVERLAP_PREMIUM: f64 = 8.0;
+
+/// The same for a Lorentzian part of a line.
+const WING_MARGIN: f64 = 6.0;
+
+/// A line that stands out of the noise by this many standard deviations shows the resolution.
+const PROMINENT: f64 = 10.0;
 
 pub(super) struct Builder<'a> {
     pub data: &'a Channels,
@@ -53,6 +65,9 @@ impl<'a> Builder<'a> {
         let mut parameters = self.seed()?;
         self.tell(Stage::Candidates, &parameters);
         for round in 0..12 {
+            if self.free_wings(&mut parameters) {
+                self.settle(&mut parameters)?;
+            }
             let flexible = self.improve_background(&mut parameters)?;
             let added = self.add(&mut parameters)?;
             if added == 0 && !flexible {
@@ -61,8 +76,9 @@ impl<'a> Builder<'a> {
             self.settle(&mut parameters)?;
             self.tell(Stage::Added(round + 1), &parameters);
         }
-        self.judge_resolution(&parameters)?;
+        self.judge_resolution(&parameters);
         for _ in 0..4 {
+            self.free_wings(&mut parameters);
             self.settle(&mut parameters)?;
             let removed = self.remove(&mut parameters)?;
             self.settle(&mut parameters)?;
@@ -78,20 +94,18 @@ impl<'a> Builder<'a> {
 
     /// Learns the resolution from the narrowest line that is known well: anything much narrower
     /// is a quirk of a few channels.
-    fn judge_resolution(&mut self, parameters: &Parameters) -> Result<(), FitError> {
+    fn judge_resolution(&mut self, parameters: &Parameters) {
         if self.options.resolution_ev.is_some() {
-            return Ok(());
+            return;
         }
-        let selection = Selection::all(parameters, self.data);
-        let (fitted, solution) = self.fit(parameters, &selection, 1, 1.0)?;
-        let first = fitted.background.parameters();
-        let known = fitted.lines.iter().enumerate().filter(|(k, line)| {
-            let sd = |what: usize| solution.covariance.sd(first + PER_LINE * k + what);
-            line.area > 12.0 * sd(3) && line.gaussian > 12.0 * sd(1) && sd(1) > 0.0
-        });
-        let width = known.map(|(_, line)| line.fwhm()).min_by(f64::total_cmp);
-        self.narrowest = width.map_or(0.0, |w| 0.7 * w);
-        Ok(())
+        let expected = parameters.expected(self.data);
+        let width = parameters
+            .lines
+            .iter()
+            .filter(|line| self.prominence(line, &expected) > PROMINENT)
+            .map(Line::fwhm)
+            .min_by(f64::total_cmp);
+        self.narrowest = width.map_or(0.0, |w| 0.6 * w);
     }
 
     fn tell(&mut self, stage: Stage, parameters: &Parameters) {
@@ -151,10 +165,6 @@ impl<'a> Builder<'a> {
 
     /// Fits everything, loosely.
     fn settle(&self, parameters: &mut Parameters) -> Result<(), FitError> {
-        for line in &mut parameters.lines {
-            // From ratio 0 the gradient itself says whether wings are wanted.
-            line.voigt |= self.is_strong(line);
-        }
         let selection = Selection::all(parameters, self.data);
         let (fitted, _) = self.fit(parameters, &selection, 25, 0.1)?;
         *parameters = fitted;
@@ -169,15 +179,56 @@ impl<'a> Builder<'a> {
         Ok(())
     }
 
-    /// Whether a line carries enough counts for its wings to be seen.
-    fn is_strong(&self, line: &Line) -> bool {
-        let near = self
+    /// Gives a Lorentzian part to lines whose wings show in the residual: by the score that the
+    /// ratio would get, with the line's other parameters free to follow. Returns whether there
+    /// were any.
+    fn free_wings(&self, parameters: &mut Parameters) -> bool {
+        let mut any = false;
+        let data = self.data;
+        let expected = parameters.expected(data);
+        let least = ((data.len() as f64).ln() + WING_MARGIN).sqrt();
+        for line in &mut parameters.lines {
+            if line.voigt || line.area <= 0.0 {
+                continue;
+            }
+            let winged = Line {
+                voigt: true,
+                ..*line
+            };
+            let reach = winged.reach().min(4.0 * line.gaussian);
+            let mut information = Matrix4::zeros();
+            let mut slope = Vector4::zeros();
+            for i in data.range(line.position - reach, line.position + reach) {
+                let [v, centre, gaussian, ratio] =
+                    value_and_gradient(&winged, data.energy[i] - line.position);
+                let column = Vector4::new(
+                    line.area * centre,
+                    line.area * gaussian,
+                    v,
+                    line.area * ratio,
+                ) * data.exposure[i];
+                let variance = data.variance(i, expected[i]);
+                information += column * column.transpose() / variance;
+                slope += column * ((data.counts[i] - expected[i]) / variance);
+            }
+            // Step of the ratio over its standard deviation.
+            if let Some(inverse) = information.try_inverse() {
+                let step = (inverse * slope)[3];
+                line.voigt = step > least * inverse[(3, 3)].max(0.0).sqrt();
+                any |= line.voigt;
+            }
+        }
+        any
+    }
+
+    /// How far a line stands out of the noise under it, in standard deviations.
+    fn prominence(&self, line: &Line, expected: &[f64]) -> f64 {
+        let reach = 0.6 * line.fwhm();
+        let under = self
             .data
-            .range(line.position - line.gaussian, line.position + line.gaussian);
-        let noise: f64 = near
-            .map(|i| self.data.variance(i, self.data.counts[i].max(1.0)))
-            .sum();
-        line.area > 25.0 * noise.sqrt()
+            .range(line.position - reach, line.position + reach);
+        let variance: f64 = under.map(|i| self.data.variance(i, expected[i])).sum();
+        0.85 * line.area / variance.max(1.0).sqrt()
     }
 
     /// Runs the solver on a selection, moving the windows along until they fit the lines.
@@ -214,6 +265,24 @@ impl<'a> Builder<'a> {
             if !moved || passes == 4 {
                 return Ok((parameters, solution));
             }
+        }
+    }
+
+    /// Fall of the deviance that line `k` has to be worth.
+    pub fn price_of(&self, parameters: &Parameters, k: usize) -> f64 {
+        let line = &parameters.lines[k];
+        let width = line.fwhm();
+        let overlaps = parameters.lines.iter().enumerate().any(|(j, other)| {
+            let other_width = other.fwhm();
+            j != k
+                && (other.position - line.position).abs() < 0.5 * (width + other_width)
+                && width < 3.0 * other_width
+                && other_width < 3.0 * width
+        });
+        if overlaps {
+            self.price + OVERLAP_PREMIUM
+        } else {
+            self.price
         }
     }
 
@@ -260,7 +329,7 @@ impl<'a> Builder<'a> {
             let mut trial = parameters.clone();
             trial.lines.push(line_from(&c));
             let gain = self.try_change(parameters, &mut trial, c.position, c.fwhm)?;
-            if gain > self.price {
+            if gain > self.price_of(&trial, trial.lines.len() - 1) {
                 *parameters = trial;
                 added += 1;
             }
@@ -357,7 +426,7 @@ impl<'a> Builder<'a> {
     /// The fit without line `k`, where that costs less than the line's price.
     fn without(&self, parameters: &Parameters, k: usize) -> Result<Option<Parameters>, FitError> {
         let loss = self.loss_without(parameters, k)?;
-        Ok((loss.0 < self.price).then_some(loss.1))
+        Ok((loss.0 < self.price_of(parameters, k)).then_some(loss.1))
     }
 
     /// How much the deviance rises without line `k`, its neighbours fitted again.

@@ -23,11 +23,10 @@ pub use bands::fit_bands;
 
 use crate::lineshape::Shape;
 use serde::{Deserialize, Serialize};
-use std::fmt;
 use thiserror::Error;
 
 /// What a fit may be told; everything has a default.
-#[derive(Debug, Clone, PartialEq, Serialize)]
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
 pub struct FitOptions {
     /// Resolution of the instrument (FWHM), eV: no line is fitted narrower than 0.85 times this.
     pub resolution_ev: Option<f64>,
@@ -51,7 +50,7 @@ impl Default for FitOptions {
             resolution_ev: None,
             window_ev: None,
             max_lines: 80,
-            background_degree: 3,
+            background_degree: 6,
             background_tail: true,
             false_alarm: 0.01,
             max_groupings: 8,
@@ -92,17 +91,16 @@ pub enum Stage {
     Grouped,
 }
 
-impl fmt::Display for FitStep {
-    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        let (lines, chi_squared) = (self.lines, self.chi_squared);
+impl std::fmt::Display for FitStep {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
         match self.stage {
-            Stage::Candidates => write!(f, "candidates")?,
-            Stage::Added(round) => write!(f, "round {round}")?,
-            Stage::Pruned => write!(f, "pruned")?,
-            Stage::Converged => write!(f, "converged")?,
-            Stage::Grouped => write!(f, "grouped")?,
+            Stage::Candidates => write!(f, "candidates of the trace fitted")?,
+            Stage::Added(round) => write!(f, "lines added from the residual, round {round}")?,
+            Stage::Pruned => write!(f, "lines that do not pay taken out")?,
+            Stage::Converged => write!(f, "fit converged")?,
+            Stage::Grouped => write!(f, "lines grouped into bands")?,
         }
-        write!(f, ", {lines} lines, χ² {chi_squared:.0}")
+        write!(f, ": {} lines, χ² {:.1}", self.lines, self.chi_squared)
     }
 }
 
@@ -183,6 +181,18 @@ pub struct BandFit {
     pub undetermined: Vec<String>,
     /// Pairs of parameters with |correlation| above 0.9.
     pub correlations: Vec<CorrelatedPair>,
+}
+
+impl FitError {
+    /// Whether the fit ran but found no minimum (rather than that the input was wrong).
+    pub fn is_not_converged(&self) -> bool {
+        matches!(
+            self,
+            FitError::Solver(
+                solver::SolverError::NotConverged(_) | solver::SolverError::Machinery(_)
+            )
+        )
+    }
 }
 
 impl BandFit {

@@ -7,6 +7,7 @@
 
 use super::background::Background;
 use super::channels::Channels;
+use super::scan::WIDEST;
 use super::solver::{Bounds, Linearization, Objective};
 use crate::lineshape::Shape;
 use nalgebra::{DMatrix, DVector};
@@ -34,6 +35,10 @@ pub(super) const PER_LINE: usize = 4;
 /// vibration and rotation than by lifetime; beyond this a line would only imitate a background.
 const HIGHEST_RATIO: f64 = 1.5;
 
+/// Ratio for which a window has room even while a line has no wings, so that growing wings do
+/// not change what they are compared with.
+const LEAST_WING: f64 = 0.05;
+
 impl Line {
     pub fn shape(&self) -> Shape {
         Shape::new(self.gaussian, self.gaussian * self.ratio)
@@ -48,7 +53,7 @@ impl Line {
     /// about 10⁻⁵, and a margin for the line to move within one run of the solver.
     pub fn reach(&self) -> f64 {
         let wing = if self.voigt {
-            150.0 * self.ratio * self.gaussian
+            150.0 * self.ratio.max(LEAST_WING) * self.gaussian
         } else {
             0.0
         };
@@ -269,7 +274,7 @@ impl<'a> Model<'a> {
                     (line.position + room).min(data.energy[data.len() - 1]),
                 );
                 let least = least_width(data, line.position, narrowest);
-                let most = (3.0 * line.gaussian).min(0.6 * span).max(least);
+                let most = (3.0 * line.gaussian).min(WIDEST).min(0.6 * span).max(least);
                 push(least.max(line.gaussian / 3.0).min(most), most);
                 push(0.0, if line.voigt { HIGHEST_RATIO } else { 0.0 });
             } else {
@@ -369,7 +374,7 @@ fn value(line: &Line, d: f64) -> f64 {
 }
 
 /// Value, then derivatives by centre, Gaussian width and ratio.
-fn value_and_gradient(line: &Line, d: f64) -> [f64; 4] {
+pub(super) fn value_and_gradient(line: &Line, d: f64) -> [f64; 4] {
     if line.ratio == 0.0 && !line.voigt {
         let t = d / line.gaussian;
         let v = GAUSSIAN_TOP / line.gaussian * (-FOUR_LN_2 * t * t).exp();

@@ -34,7 +34,7 @@ pub(super) struct Candidate {
 pub(super) struct Widths(pub Vec<f64>);
 
 /// Widest single line looked for, eV: strongly Jahn-Teller distorted bands reach about this.
-pub(super) const WIDEST: f64 = 1.6;
+pub(super) const WIDEST: f64 = 1.5;
 
 impl Widths {
     /// From the narrowest line that the channels (or the instrument) can show to a broad band.
@@ -52,9 +52,11 @@ impl Widths {
         Widths(widths)
     }
 
-    /// Independent places on the grid, about: one per half width at each width.
+    /// Independent places, about. Six per width of the line: with it, noise traces give as many
+    /// lines as `false_alarm` says; a fit moves and widens a candidate, so that more than the grid
+    /// is tried.
     pub fn places(&self, data: &Channels) -> f64 {
-        self.0.iter().map(|w| 2.0 * data.span() / w).sum()
+        self.0.iter().map(|w| 6.0 * data.span() / w).sum()
     }
 
     /// Score that noise exceeds somewhere with probability `false_alarm`.
@@ -192,8 +194,12 @@ pub(super) fn blobs(data: &Channels, widths: &Widths, least: f64) -> Vec<Candida
 
 /// Area and score of a Gaussian on a local straight line, by weighted least squares.
 fn on_a_line(data: &Channels, variance: &[f64], position: f64, sd: f64) -> Option<(f64, f64)> {
-    let near = data.range(position - 2.5 * sd, position + 2.5 * sd);
-    if near.len() < 6 {
+    let (low, high) = (position - 2.5 * sd, position + 2.5 * sd);
+    let near = data.range(low, high);
+    // The line needs both sides to stand on.
+    let inside = low.max(data.energy[0]) < position - 1.5 * sd
+        && high.min(data.energy[data.len() - 1]) > position + 1.5 * sd;
+    if near.len() < 6 || !inside {
         return None;
     }
     // Normal equations for (constant, slope, height).
@@ -243,6 +249,10 @@ pub(super) fn residue(
         .map(|&fwhm| {
             let sd = fwhm / GAUSSIAN_FWHM_PER_SD;
             Row::new(data, fwhm, |position| {
+                let last = data.energy[data.len() - 1];
+                if position - 0.5 * fwhm < data.energy[0] || position + 0.5 * fwhm > last {
+                    return None;
+                }
                 let (mut slope, mut information) = (0.0, 0.0);
                 for i in data.range(position - 3.0 * sd, position + 3.0 * sd) {
                     let u = (data.energy[i] - position) / sd;

@@ -259,7 +259,7 @@ impl Decomposed {
 }
 
 /// Inverse of JᵀJ, with what it cannot say.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Clone, PartialEq)]
 pub struct Covariance {
     /// Covariances; rows and columns of parameters held at a bound are zero. Multiply by the
     /// residual variance where the residuals are not in units of their standard deviation.
@@ -267,6 +267,17 @@ pub struct Covariance {
     /// Directions that the objective does not depend on (to rounding): parameter numbers with
     /// their components. They are left out of `matrix`.
     pub undetermined: Vec<Vec<(usize, f64)>>,
+}
+
+impl std::fmt::Debug for Covariance {
+    /// Standard deviations instead of the whole matrix, which nobody reads.
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        let sd: Vec<f64> = (0..self.matrix.ncols()).map(|j| self.sd(j)).collect();
+        f.debug_struct("Covariance")
+            .field("sd", &sd)
+            .field("undetermined", &self.undetermined)
+            .finish_non_exhaustive()
+    }
 }
 
 impl Covariance {

@@ -96,7 +96,6 @@ impl TrustRegion {
         let mut free: Vec<usize> = (0..n)
             .filter(|&j| !held(&self.bounds, &self.point, &gradient, j))
             .collect();
-        let mut first: Option<DVector<f64>> = None;
         while !free.is_empty() {
             let used = self.scaled_length(step.iter().copied());
             let left = (radius * radius - used * used).max(0.0).sqrt();
@@ -110,43 +109,70 @@ impl TrustRegion {
             for (k, &j) in free.iter().enumerate() {
                 trial[j] = inner[k] / self.scale[j];
             }
-            first.get_or_insert_with(|| trial.clone());
-            let mut cut = Vec::new();
-            for &j in &free {
+            // How much of its step each parameter can make; the first to meet a bound are cut.
+            let room = |j: usize| {
                 let goal = self.point[j] + trial[j];
-                if goal < self.bounds.lower[j] || goal > self.bounds.upper[j] {
-                    let edge = goal.max(self.bounds.lower[j]).min(self.bounds.upper[j]);
-                    cut.push((j, edge - self.point[j]));
-                }
-            }
-            if cut.is_empty() {
+                let edge = goal.max(self.bounds.lower[j]).min(self.bounds.upper[j]);
+                (edge - self.point[j], edge != goal)
+            };
+            let reach = free
+                .iter()
+                .filter(|&&j| room(j).1)
+                .map(|&j| (room(j).0 - step[j]) / (trial[j] - step[j]))
+                .fold(f64::INFINITY, f64::min);
+            if reach == f64::INFINITY {
                 step = trial;
                 break;
             }
-            for &(j, s) in &cut {
-                step[j] = s;
+            let (cut, kept): (Vec<usize>, Vec<usize>) = free.iter().partition(|&&j| {
+                let (left, meets) = room(j);
+                meets && (left - step[j]) / (trial[j] - step[j]) <= reach + 0.1
+            });
+            for j in cut {
+                step[j] = room(j).0;
             }
-            free.retain(|j| cut.iter().all(|(c, _)| c != j));
+            free = kept;
         }
-        match first {
-            // The cut step can climb the model; the first one, shortened to the nearest bound,
-            // cannot.
-            Some(first) if system.predicted_change(&step) >= 0.0 => {
-                let mut reach = 1.0_f64;
-                for j in 0..n {
-                    let room = if first[j] > 0.0 {
-                        self.bounds.upper[j] - self.point[j]
-                    } else {
-                        self.bounds.lower[j] - self.point[j]
-                    };
-                    if first[j] != 0.0 {
-                        reach = reach.min(room / first[j]);
-                    }
-                }
-                first * reach.max(0.0)
+        if system.predicted_change(&step) < 0.0 {
+            step
+        } else {
+            self.steepest(radius)
+        }
+    }
+
+    /// Step along the scaled gradient to the model's minimum, the radius or the first bound: it
+    /// always lowers the model, for when a step cut at bounds does not.
+    fn steepest(&self, radius: f64) -> DVector<f64> {
+        let system = self.system.as_ref().expect("linearized");
+        let gradient = system.gradient();
+        let direction = DVector::from_fn(self.point.len(), |j, _| {
+            if held(&self.bounds, &self.point, &gradient, j) {
+                0.0
+            } else {
+                -gradient[j] / (self.scale[j] * self.scale[j])
             }
-            _ => step,
+        });
+        let length = self.scaled_length(direction.iter().copied());
+        if length == 0.0 {
+            return direction;
         }
+        let slope = gradient.dot(&direction);
+        let curvature = system.predicted_change(&direction) - 2.0 * slope;
+        let mut reach = radius / length;
+        if curvature > 0.0 {
+            reach = reach.min(-slope / curvature);
+        }
+        for j in 0..self.point.len() {
+            if direction[j] != 0.0 {
+                let bound = if direction[j] > 0.0 {
+                    self.bounds.upper[j]
+                } else {
+                    self.bounds.lower[j]
+                };
+                reach = reach.min((bound - self.point[j]) / direction[j]);
+            }
+        }
+        direction * reach
     }
 
     fn moved(&self, step: &DVector<f64>) -> Vec<f64> {
