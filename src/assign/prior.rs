@@ -50,6 +50,7 @@ pub(super) const ORDER_REACH_EV: f64 = 2.5;
 #[derive(Debug, Clone, PartialEq, Deserialize)]
 pub(super) struct LevelError {
     method: String,
+    scheme: String,
     class: String,
     pub reference_ev: f64,
     pub shift_ev: f64,
@@ -137,18 +138,13 @@ impl Prior {
         };
         for state in mains {
             check(state)?;
-            let class = if described {
-                class_of(state, levels)
-            } else {
-                "any"
-            };
-            let row = rows
-                .iter()
-                .find(|r| r.class == class)
-                .ok_or(AssignError::Table {
-                    table: "level_errors.csv",
-                    message: format!("no class '{class}' for {}", levels.level.method),
-                })?;
+            let scheme = if described { "described" } else { "plain" };
+            let class = class_of(state, levels);
+            let row = rows.iter().find(|r| r.scheme == scheme && r.class == class);
+            let row = row.ok_or_else(|| AssignError::Table {
+                table: "level_errors.csv",
+                message: format!("no {scheme} class '{class}' for {}", levels.level.method),
+            })?;
             prior.shift_sd_ev = row.shift_sd_ev;
             prior.slope_sd = row.slope_sd;
             let lever_ev = state.ionization_energy_ev - row.reference_ev;
@@ -317,9 +313,15 @@ mod tests {
     fn every_method_has_an_error_model() {
         for method in Method::ALL {
             let rows = level_errors(method).unwrap();
-            assert!(rows.iter().any(|r| r.class == "any"), "{method}");
-            for row in rows {
-                assert!(row.scatter_sd_ev > 0.0 && row.shift_sd_ev > 0.0 && row.slope_sd > 0.0);
+            for (scheme, count) in [("plain", 2), ("described", 3)] {
+                let rows: Vec<_> = rows.iter().filter(|r| r.scheme == scheme).collect();
+                assert_eq!(rows.len(), count, "{method} {scheme}");
+                for row in &rows {
+                    assert!(row.scatter_sd_ev > 0.0);
+                    // Common to the molecule, so one value for all classes.
+                    assert_eq!(row.shift_sd_ev, rows[0].shift_sd_ev);
+                    assert_eq!(row.slope_sd, rows[0].slope_sd);
+                }
             }
         }
     }
