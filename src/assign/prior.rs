@@ -46,6 +46,10 @@ pub(super) const ORDER_REACH: usize = 4;
 /// See [`ORDER_REACH`].
 pub(super) const ORDER_REACH_EV: f64 = 2.5;
 
+/// States expected further than this outside the window, in standard deviations of all errors
+/// together, are left out: the chance that one shows inside is below 0.001.
+const OUT_OF_SIGHT: f64 = 3.5;
+
 /// Error of one class of states at one method, as the data file holds it.
 #[derive(Debug, Clone, PartialEq, Deserialize)]
 pub(super) struct LevelError {
@@ -164,9 +168,9 @@ impl Prior {
                 + (row.slope_sd * lever_ev).powi(2)
                 + row.scatter_sd_ev.powi(2))
             .sqrt();
-            if entry.expected_ev > high + 5.0 * spread {
+            if entry.expected_ev > high + OUT_OF_SIGHT * spread {
                 prior.beyond.push(entry);
-            } else if entry.expected_ev > low - 5.0 * spread {
+            } else if entry.expected_ev > low - OUT_OF_SIGHT * spread {
                 prior.states.push(entry);
             }
         }
