@@ -7,7 +7,7 @@
 use super::AssignError;
 use super::Conditions;
 use super::likelihood::Datum;
-use super::prior::{AREA_LN_RANGE, Look, Prior, UNKNOWN_BANDS, normal};
+use super::prior::{AREA_LN_RANGE, Look, Prior, normal};
 use crate::fit::Band;
 use serde::Deserialize;
 
@@ -162,7 +162,7 @@ impl Surroundings {
                 }));
             }
         }
-        all.retain(|s| s.weight > 1e-4 * UNKNOWN_BANDS);
+        all.retain(|s| s.weight > 1e-4 * prior.unknown_bands());
         all.sort_by(|a, b| b.weight.total_cmp(&a.weight).then(a.name.cmp(&b.name)));
         all
     }

@@ -14,12 +14,12 @@ use serde::Deserialize;
 /// Probability that a state inside the window shows up in some band. Judgement: a fit loses about
 /// one band in thirty to overlap and noise.
 pub(super) const SEEN: f64 = 0.97;
-/// Expected number of bands per trace that belong neither to the molecule nor to a known gas or
-/// lamp line. Judgement.
-pub(super) const UNKNOWN_BANDS: f64 = 0.2;
+/// Expected number of bands per eV that belong neither to the molecule nor to a known gas or lamp
+/// line: one in five He I spectra of 12 eV has one. Judgement.
+pub(super) const UNKNOWN_BANDS_PER_EV: f64 = 0.2 / 12.0;
 /// Share of the states whose error is of another size than the rest, and how much larger its
-/// standard deviation is: F2, Ne and Ar in the fitted set (3 of 94, up to 5 standard deviations).
-pub(super) const WILD_SHARE: f64 = 0.05;
+/// standard deviation is: 3σg of F2, 2p of Ne and 2π of N2O in the fitted set (3 of 94).
+pub(super) const WILD_SHARE: f64 = 0.03;
 /// See [`WILD_SHARE`].
 pub(super) const WILD_FACTOR: f64 = 3.0;
 /// Standard deviation of the logarithm of area per degeneracy: a factor of two at He I, where
@@ -182,6 +182,11 @@ impl Prior {
         prior.states.sort_by(by_energy);
         prior.beyond.sort_by(by_energy);
         Ok(prior)
+    }
+
+    /// Expected number of unknown bands in the window: the weight of one.
+    pub(super) fn unknown_bands(&self) -> f64 {
+        UNKNOWN_BANDS_PER_EV * self.window_width_ev()
     }
 
     /// Width of the window, eV: unrelated bands stand anywhere in it.

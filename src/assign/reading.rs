@@ -6,7 +6,7 @@ use super::evidence;
 use super::foreign::{Belief, Cause, Seen, Surroundings, Suspect};
 use super::likelihood::{self, Comparison, Datum};
 use super::posterior::{self, Grid, Posterior};
-use super::prior::{Prior, UNKNOWN_BANDS};
+use super::prior::Prior;
 use super::remarks;
 use super::{Alternative, AssignError, Assignment, Conditions, Match};
 use crate::fit::{Band, Grouping};
@@ -122,7 +122,7 @@ impl<'a> Reading<'a> {
         let instrument = likelihood::instrument_width_ev(&grouping.bands);
         let data = bands
             .iter()
-            .map(|b| Datum::new(b, instrument, UNKNOWN_BANDS))
+            .map(|b| Datum::new(b, instrument, prior.unknown_bands()))
             .collect();
         let blank = vec![Belief::default(); bands.len()];
         let mut reading = Reading {
@@ -150,7 +150,7 @@ impl<'a> Reading<'a> {
             .map(|at| surroundings.suspects(&self.bands, &self.data, at, prior, &beliefs[at]))
             .collect();
         for (datum, suspects) in self.data.iter_mut().zip(&self.suspects) {
-            datum.foreign = UNKNOWN_BANDS + suspects.iter().map(|s| s.weight).sum::<f64>();
+            datum.foreign = prior.unknown_bands() + suspects.iter().map(|s| s.weight).sum::<f64>();
         }
         let comparison = Comparison::new(prior, chart, &self.data);
         self.posterior = posterior::solve(&comparison, &Grid::new(&comparison, 1.0))?;
