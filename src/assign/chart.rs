@@ -30,6 +30,15 @@ pub(super) fn allowed_gaps(size: usize) -> usize {
     }
 }
 
+/// Neighbours in one band are expected at most this far apart, eV: further apart, a band that was
+/// not found is the likelier story.
+const SHARING_REACH_EV: f64 = 1.5;
+
+/// Whether `upper` may be the next state above `lower` in one band.
+pub(super) fn may_share(prior: &Prior, lower: usize, upper: usize) -> bool {
+    prior.states[upper].expected_ev - prior.states[lower].expected_ev <= SHARING_REACH_EV
+}
+
 /// Passing one state before a band takes its set.
 pub(super) struct Pass {
     pub from: usize,
@@ -80,7 +89,7 @@ type Place = (usize, Vec<usize>, Vec<usize>);
 
 impl Chart {
     pub(super) fn new(prior: &Prior) -> Self {
-        let sets = all_sets(prior.states.len());
+        let sets = all_sets(prior);
         Builder::new(prior, sets).build()
     }
 }
@@ -136,8 +145,9 @@ impl Chart {
     }
 }
 
-/// All sets allowed by size and gaps.
-fn all_sets(states: usize) -> Vec<Vec<usize>> {
+/// All sets allowed by size, gaps and energies.
+fn all_sets(prior: &Prior) -> Vec<Vec<usize>> {
+    let states = prior.states.len();
     let mut sets = Vec::new();
     for first in 0..states {
         let mut open = vec![vec![first]];
@@ -147,7 +157,7 @@ fn all_sets(states: usize) -> Vec<Vec<usize>> {
                 for next in last + 1..(last + 4).min(states) {
                     let mut longer = set.clone();
                     longer.push(next);
-                    if next - first + 1 - longer.len() <= 2 {
+                    if next - first + 1 - longer.len() <= 2 && may_share(prior, last, next) {
                         open.push(longer);
                     }
                 }

@@ -7,7 +7,7 @@
 use super::AssignError;
 use super::Conditions;
 use super::likelihood::Datum;
-use super::prior::{AREA_LN_RANGE, Look, Prior, UNKNOWN_BANDS, normal};
+use super::prior::{AREA_LN_RANGE, Look, Prior, normal};
 use crate::fit::Band;
 use serde::Deserialize;
 
@@ -21,8 +21,16 @@ const GHOST_LN_SD: f64 = 0.6;
 const LINE_SD_EV: f64 = 0.005;
 /// See [`LINE_SD_EV`].
 const ENVELOPE_SD_EV: f64 = 0.06;
+/// Standard deviation of the logarithm of an envelope's width, and the range over which widths of
+/// unrelated bands are spread (0.03 to 1.5 eV).
+const ENVELOPE_WIDTH_LN_SD: f64 = 0.3;
+/// See [`ENVELOPE_WIDTH_LN_SD`].
+const WIDTH_LN_RANGE: f64 = 4.0;
 /// What is left of a candidate gas for each of its lines that ought to be seen and is not.
 const ABSENT_LINE: f64 = 0.2;
+/// Standard deviation of the logarithm of a line's share in its gas: the tabulated shares are
+/// rough and the analyser's transmission is not known.
+const GAS_SHARE_LN_SD: f64 = 0.6;
 /// A photon energy this close to a lamp's main line names the lamp, eV.
 const LAMP_TOLERANCE_EV: f64 = 0.05;
 
@@ -35,7 +43,8 @@ pub(super) struct GasLine {
     pub line: String,
     pub energy_ev: f64,
     pub share: f64,
-    shape: String,
+    pub shape: String,
+    fwhm_ev: Option<f64>,
 }
 
 /// A line that a lamp emits beside its main line.
@@ -68,11 +77,21 @@ pub(super) struct Suspect {
     pub weight: f64,
 }
 
+/// A gas seen in another band.
+#[derive(Debug, Clone)]
+pub(super) struct Seen {
+    pub gas: String,
+    /// Probability that the other band is this gas.
+    pub probability: f64,
+    /// Logarithm of the gas's whole area as that band tells it.
+    pub ln_area: Option<f64>,
+}
+
 /// What is believed of gases after a first look, for one band: the others' word.
 #[derive(Debug, Clone, Default)]
 pub(super) struct Belief {
-    /// Gases seen elsewhere in the trace with their probability.
-    pub seen: Vec<(String, f64)>,
+    /// Gases seen elsewhere in the trace.
+    pub seen: Vec<Seen>,
     /// Offset of the energy scale with its standard deviation, eV; `None` for the prior's.
     pub offset_ev: Option<(f64, f64)>,
 }
@@ -143,7 +162,7 @@ impl Surroundings {
                 }));
             }
         }
-        all.retain(|s| s.weight > 1e-4 * UNKNOWN_BANDS);
+        all.retain(|s| s.weight > 1e-4 * prior.unknown_bands());
         all.sort_by(|a, b| b.weight.total_cmp(&a.weight).then(a.name.cmp(&b.name)));
         all
     }
@@ -160,12 +179,7 @@ impl Surroundings {
         let line = &self.lines[number];
         let band = bands[at];
         let (offset, offset_sd) = belief.offset_ev.unwrap_or((0.0, self.offset_sd_ev));
-        let elsewhere = belief
-            .seen
-            .iter()
-            .find(|(gas, _)| *gas == line.gas)
-            .map_or(0.0, |(_, p)| *p);
-        let presence = line.presence + (1.0 - line.presence) * elsewhere;
+        let presence = presence(belief, line, &data[at]);
         let same_gas = || self.lines.iter().filter(|l| l.gas == line.gas);
         let strongest = same_gas().map(|l| l.share).fold(0.0, f64::max);
         let shown = STRONGEST_LINE_SEEN * (line.share / strongest).max(0.05);
@@ -182,7 +196,7 @@ impl Surroundings {
         weight *= normal(deviation_ev - offset, variance);
         weight *= self.gas_look(band, data[at].look, line, offset, variance.sqrt());
         for other in same_gas().filter(|l| l.line != line.line && l.shape == "line") {
-            if !envelope && ought_to_show(bands, data, at, prior, line, other) {
+            if ought_to_show(bands, data, at, prior, line, other) {
                 weight *= ABSENT_LINE;
             }
         }
@@ -195,10 +209,11 @@ impl Surroundings {
         }
     }
 
-    /// How well the band's look fits a gas line, four times the probability.
+    /// How well the band's look fits a gas line, against an unrelated band's.
     fn gas_look(&self, band: &Band, look: Look, line: &GasLine, offset: f64, sd: f64) -> f64 {
-        if line.shape == "envelope" {
-            return 4.0 * [0.02, 0.10, 0.45, 0.43][look as usize];
+        if let Some(fwhm) = line.fwhm_ev {
+            let off = (band.fwhm_ev / fwhm).ln();
+            return WIDTH_LN_RANGE * normal(off, ENVELOPE_WIDTH_LN_SD.powi(2));
         }
         if band.members.len() < 2 {
             return 4.0 * [0.85, 0.12, 0.02, 0.01][look as usize];
@@ -214,6 +229,22 @@ impl Surroundings {
         });
         4.0 * if all_known { 0.85 } else { 0.02 }
     }
+}
+
+/// Prior weight of the gas: its own, or, as far as it was seen in another band, how well this
+/// band's area goes with that one's.
+fn presence(belief: &Belief, line: &GasLine, datum: &Datum) -> f64 {
+    let Some(seen) = belief.seen.iter().find(|seen| seen.gas == line.gas) else {
+        return line.presence;
+    };
+    let agreement = match (seen.ln_area, datum.ln_area) {
+        (Some(whole), Some((own, own_var))) => {
+            let off = own - whole - line.share.ln();
+            AREA_LN_RANGE * normal(off, GAS_SHARE_LN_SD.powi(2) + own_var)
+        }
+        _ => 1.0,
+    };
+    (1.0 - seen.probability) * line.presence + seen.probability * agreement
 }
 
 /// Reads an embedded table.

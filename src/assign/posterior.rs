@@ -53,8 +53,10 @@ pub(super) struct Grid {
 
 /// Grid steps per posterior standard deviation expected when all bands are matched.
 const STEP: f64 = 1.2;
-/// How far the grid reaches, prior standard deviations.
-const REACH: f64 = 4.5;
+/// How far the grid reaches, prior standard deviations: shift and slope, strength.
+const REACH: f64 = 4.0;
+/// See [`REACH`].
+const STRENGTH_REACH: f64 = 3.0;
 /// Points of the grid below this share of the best are left out of the second sweep.
 const NEGLIGIBLE: f64 = 1e-9;
 
@@ -87,9 +89,12 @@ impl Grid {
             STEP / refine / (prior_sd.powi(-2) + information).sqrt()
         };
         let shift_sd = (prior.shift_sd_ev.powi(2) + (prior.slope_sd * lever).powi(2)).sqrt();
-        let shifts = points(shift_sd, sharpest(shift_sd, pairs / scatter.powi(2)));
+        let shifts = points(
+            REACH * shift_sd,
+            sharpest(shift_sd, pairs / scatter.powi(2)),
+        );
         let slopes = points(
-            prior.slope_sd,
+            REACH * prior.slope_sd,
             sharpest(prior.slope_sd, pairs * spread / scatter.powi(2)),
         );
         let density = |x: f64, sd: f64| (-0.5 * (x / sd).powi(2)).exp();
@@ -103,7 +108,7 @@ impl Grid {
         }
         let usual = comparison.usual_ln_strength();
         let step = sharpest(STRENGTH_LN_SD, pairs / AREA_LN_SD.powi(2));
-        let strengths = (points(STRENGTH_LN_SD, step).into_iter())
+        let strengths = (points(STRENGTH_REACH * STRENGTH_LN_SD, step).into_iter())
             .map(|x| (usual + x, density(x, STRENGTH_LN_SD)))
             .collect();
         let mut grid = Grid {
@@ -119,24 +124,43 @@ impl Grid {
     }
 }
 
-/// Regular points about zero out to [`REACH`] standard deviations.
-fn points(sd: f64, step: f64) -> Vec<f64> {
-    let half = (REACH * sd / step).ceil() as i64;
+/// Regular points about zero out to `reach`.
+fn points(reach: f64, step: f64) -> Vec<f64> {
+    let half = (reach / step).ceil() as i64;
     (-half..=half).map(|i| i as f64 * step).collect()
 }
 
 /// Weights at one point of the grid.
-#[derive(Clone, Copy)]
 pub(super) struct Weights<'a> {
-    pub comparison: &'a Comparison<'a>,
-    pub positions: &'a Positions,
-    pub areas: &'a Areas,
+    comparison: &'a Comparison<'a>,
+    positions: &'a Positions,
+    areas: &'a Areas,
+    /// Per band and set.
+    sets: Vec<Vec<f64>>,
 }
 
-impl Weights<'_> {
-    fn set(&self, band: usize, set: usize) -> f64 {
-        let class = self.comparison.class_of_set[set];
-        self.positions.sets[band][set] * self.areas.sets[band][class]
+impl<'a> Weights<'a> {
+    pub(super) fn new(
+        comparison: &'a Comparison<'a>,
+        positions: &'a Positions,
+        areas: &'a Areas,
+    ) -> Self {
+        let classes = &comparison.class_of_set;
+        let sets = (positions.sets.iter().zip(&areas.sets))
+            .map(|(place, area)| {
+                place
+                    .iter()
+                    .zip(classes)
+                    .map(|(p, c)| p * area[*c])
+                    .collect()
+            })
+            .collect();
+        Weights {
+            comparison,
+            positions,
+            areas,
+            sets,
+        }
     }
 
     fn split(&self, band: usize, state: usize) -> [f64; 2] {
@@ -167,15 +191,16 @@ fn forward(chart: &Chart, weights: &Weights) -> Sweep {
         }
         let (here, later) = arrival.split_at_mut(band + 1);
         let here = &here[band];
+        let sets = &weights.sets[band];
         for (place, sum) in here.iter().enumerate() {
             later[0][place] += sum * weights.comparison.data[band].foreign;
         }
         for take in &chart.late_takes {
-            later[0][take.to] += here[take.from] * weights.set(band, take.set);
+            later[0][take.to] += here[take.from] * sets[take.set];
         }
         for take in &chart.takes {
             later[0][take.to] +=
-                on_way[take.from] * weights.set(band, take.set) * weights.positions.gaps[take.gap];
+                on_way[take.from] * sets[take.set] * weights.positions.gaps[take.gap];
         }
         for split in &chart.splits {
             let w = weights.split(band, split.state);
@@ -221,17 +246,18 @@ fn collect(chart: &Chart, weights: &Weights, weight: f64, shares: &mut Shares) {
         let mut on_way = vec![0.0; chart.places];
         let next = &later[band + 1];
         let data = &weights.comparison.data[band];
+        let sets = &weights.sets[band];
         let mut here: Vec<f64> = next.iter().map(|sum| sum * data.foreign).collect();
         let arrived = &sweep.arrival[band];
         shares.foreign[band] += weight * arrived.iter().zip(&here).map(|(a, b)| a * b).sum::<f64>();
         for take in &chart.late_takes {
-            let tail = weights.set(band, take.set) * next[take.to];
+            let tail = sets[take.set] * next[take.to];
             here[take.from] += tail;
             shares.sets[band][take.set] += weight * arrived[take.from] * tail;
         }
         for take in &chart.takes {
             let gap = weights.positions.gaps[take.gap];
-            let tail = weights.set(band, take.set) * gap * next[take.to];
+            let tail = sets[take.set] * gap * next[take.to];
             on_way[take.from] += tail;
             shares.sets[band][take.set] += weight * sweep.travelled[band][take.from] * tail;
         }
@@ -314,17 +340,27 @@ pub(super) fn solve(comparison: &Comparison, grid: &Grid) -> Result<Posterior, A
         .iter()
         .map(|(ln_strength, _)| comparison.areas(*ln_strength))
         .collect();
-    // First sweep: the integrand everywhere.
-    let sums: Vec<Vec<f64>> = (grid.common.par_iter())
+    // A probe at three strengths shows where shift and slope are out of the question.
+    let middle = areas.len() / 2;
+    let probes = [middle / 2, middle, middle + middle / 2];
+    let probed: Vec<f64> = (grid.common.par_iter())
         .map(|(shift, slope, weight)| {
+            let positions = comparison.positions(*shift, *slope);
+            let at = |n: &usize| total(chart, &Weights::new(comparison, &positions, &areas[*n]));
+            weight * probes.iter().map(at).fold(0.0, f64::max)
+        })
+        .collect();
+    let threshold = NEGLIGIBLE * probed.iter().copied().fold(0.0, f64::max);
+    // First sweep: the integrand everywhere else.
+    let sums: Vec<Vec<f64>> = (grid.common.par_iter().zip(&probed))
+        .map(|((shift, slope, weight), probe)| {
+            if *probe < threshold {
+                return vec![0.0; areas.len()];
+            }
             let positions = comparison.positions(*shift, *slope);
             (areas.iter().zip(&grid.strengths))
                 .map(|(areas, (_, strength_weight))| {
-                    let weights = Weights {
-                        comparison,
-                        positions: &positions,
-                        areas,
-                    };
+                    let weights = Weights::new(comparison, &positions, areas);
                     weight * strength_weight * total(chart, &weights)
                 })
                 .collect()
@@ -345,11 +381,7 @@ pub(super) fn solve(comparison: &Comparison, grid: &Grid) -> Result<Posterior, A
             let mut shares = Shares::new(comparison);
             for (number, (_, strength_weight)) in grid.strengths.iter().enumerate() {
                 if row[number] >= NEGLIGIBLE * best {
-                    let weights = Weights {
-                        comparison,
-                        positions: &positions,
-                        areas: &areas[number],
-                    };
+                    let weights = Weights::new(comparison, &positions, &areas[number]);
                     collect(chart, &weights, weight * strength_weight, &mut shares);
                 }
             }

@@ -3,10 +3,10 @@
 use super::chart::Chart;
 use super::decode;
 use super::evidence;
-use super::foreign::{Belief, Cause, Surroundings, Suspect};
+use super::foreign::{Belief, Cause, Seen, Surroundings, Suspect};
 use super::likelihood::{self, Comparison, Datum};
 use super::posterior::{self, Grid, Posterior};
-use super::prior::{Prior, UNKNOWN_BANDS};
+use super::prior::Prior;
 use super::remarks;
 use super::{Alternative, AssignError, Assignment, Conditions, Match};
 use crate::fit::{Band, Grouping};
@@ -122,7 +122,7 @@ impl<'a> Reading<'a> {
         let instrument = likelihood::instrument_width_ev(&grouping.bands);
         let data = bands
             .iter()
-            .map(|b| Datum::new(b, instrument, UNKNOWN_BANDS))
+            .map(|b| Datum::new(b, instrument, prior.unknown_bands()))
             .collect();
         let blank = vec![Belief::default(); bands.len()];
         let mut reading = Reading {
@@ -150,7 +150,7 @@ impl<'a> Reading<'a> {
             .map(|at| surroundings.suspects(&self.bands, &self.data, at, prior, &beliefs[at]))
             .collect();
         for (datum, suspects) in self.data.iter_mut().zip(&self.suspects) {
-            datum.foreign = UNKNOWN_BANDS + suspects.iter().map(|s| s.weight).sum::<f64>();
+            datum.foreign = prior.unknown_bands() + suspects.iter().map(|s| s.weight).sum::<f64>();
         }
         let comparison = Comparison::new(prior, chart, &self.data);
         self.posterior = posterior::solve(&comparison, &Grid::new(&comparison, 1.0))?;
@@ -162,48 +162,53 @@ impl<'a> Reading<'a> {
         self.posterior.foreign[at] * suspect.weight / self.data[at].foreign
     }
 
-    /// What the other bands say of gases, per band; `None` where no gas is likely anywhere.
+    /// What the other bands say of gases, per band; `None` where no gas is likely anywhere. The
+    /// offset of the scale is learnt from single lines only.
     fn beliefs(&self, surroundings: &Surroundings) -> Option<Vec<Belief>> {
-        struct Sighting<'s> {
-            band: usize,
-            gas: &'s str,
-            deviation_ev: f64,
-            probability: f64,
-        }
         let mut sightings = Vec::new();
         for (band, suspects) in self.suspects.iter().enumerate() {
             for suspect in suspects {
                 if let Cause::Gas(line) = suspect.cause {
-                    sightings.push(Sighting {
-                        band,
-                        gas: &surroundings.lines[line].gas,
-                        deviation_ev: suspect.deviation_ev,
-                        probability: self.guilt(band, suspect),
-                    });
+                    let probability = self.guilt(band, suspect);
+                    if probability > 0.02 {
+                        sightings.push((band, suspect, &surroundings.lines[line], probability));
+                    }
                 }
             }
         }
-        sightings.retain(|s| s.probability > 0.02);
         if sightings.is_empty() {
             return None;
         }
         let beliefs = (0..self.bands.len())
             .map(|at| {
-                let mut belief = Belief::default();
+                let mut seen: Vec<Seen> = Vec::new();
                 let prior_precision = surroundings.offset_sd_ev.max(1e-4).powi(-2);
                 let (mut precision, mut sum) = (prior_precision, 0.0);
-                for s in sightings.iter().filter(|s| s.band != at) {
-                    let known = belief.seen.iter().position(|(gas, _)| gas == s.gas);
-                    match known {
-                        Some(i) => belief.seen[i].1 = belief.seen[i].1.max(s.probability),
-                        None => belief.seen.push((s.gas.to_string(), s.probability)),
+                for (band, suspect, line, probability) in &sightings {
+                    if *band == at {
+                        continue;
                     }
-                    let sd = self.bands[s.band].vertical_sd.max(0.005);
-                    precision += s.probability * sd.powi(-2);
-                    sum += s.probability * s.deviation_ev * sd.powi(-2);
+                    let ln_area = self.data[*band].ln_area.map(|(ln, _)| ln - line.share.ln());
+                    let sighting = Seen {
+                        gas: line.gas.clone(),
+                        probability: *probability,
+                        ln_area,
+                    };
+                    match seen.iter_mut().find(|s| s.gas == line.gas) {
+                        Some(known) if known.probability < *probability => *known = sighting,
+                        Some(_) => {}
+                        None => seen.push(sighting),
+                    }
+                    if line.shape == "line" {
+                        let sd = self.bands[*band].vertical_sd.max(0.005);
+                        precision += probability * sd.powi(-2);
+                        sum += probability * suspect.deviation_ev * sd.powi(-2);
+                    }
                 }
-                belief.offset_ev = Some((sum / precision, precision.powf(-0.5)));
-                belief
+                Belief {
+                    seen,
+                    offset_ev: Some((sum / precision, precision.powf(-0.5))),
+                }
             })
             .collect();
         Some(beliefs)

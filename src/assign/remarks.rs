@@ -3,7 +3,7 @@
 use super::decode;
 use super::foreign::{Cause, Surroundings, Suspect, covers};
 use super::likelihood::Comparison;
-use super::prior::{UNKNOWN_BANDS, scatter_below};
+use super::prior::scatter_below;
 use super::reading::Reading;
 use super::{Candidate, Remark, RemarkKind};
 
@@ -82,7 +82,9 @@ impl Outcome<'_> {
             .take(5)
             .collect();
         let place = band.maximum_ev;
-        let leader = suspects.first().filter(|s| s.weight > UNKNOWN_BANDS);
+        let leader = suspects
+            .first()
+            .filter(|s| s.weight > self.comparison.prior.unknown_bands());
         let (kind, mut text) = match leader {
             Some(s) => match s.cause {
                 Cause::Gas(line) => (RemarkKind::ForeignGas, self.gas_text(at, s, line)),

@@ -6,7 +6,7 @@ use crate::levels::{
     Character, HoleState, Level, Levels, LineKind, Method, MoleculeSummary, ScfSummary, Verdict,
 };
 
-/// A hole state without σ/π description: class `any`.
+/// A hole state without atoms or σ/π description: scheme `plain`, class `other`.
 pub(super) fn state(label: &str, energy: f64, degeneracy: usize, verdict: Verdict) -> HoleState {
     HoleState {
         label: label.to_string(),
