@@ -6,6 +6,7 @@
 
 mod elements;
 mod geometry;
+pub mod symmetry;
 mod xyz;
 
 pub use elements::{
