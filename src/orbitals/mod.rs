@@ -1,1 +1,3 @@
 //! What orbitals are made of: populations and character.
+
+pub mod irreps;
