@@ -8,7 +8,6 @@
 
 use super::hermite;
 use crate::basis::{MAX_ORBITAL_L, Shell};
-use crate::numeric::harmonics::solid_harmonics;
 use nalgebra::Vector3;
 
 /// Exponents and centre of one Hermite expansion.
@@ -133,7 +132,7 @@ impl Distribution {
                 second_exponent: 0.0,
             });
             let factor = c / (2.0 * alpha).powi(shell.l as i32);
-            for (m, harmonic) in solid_harmonics(shell.l).iter().enumerate() {
+            for (m, harmonic) in hermite::harmonic_terms(shell.l).iter().enumerate() {
                 for term in harmonic {
                     let [t, u, v] = term.powers;
                     e[hermite::index(t, u, v) * rows + m] += factor * term.coefficient;
@@ -170,8 +169,8 @@ fn expand_product(
     axes: &[Axis; 3],
 ) {
     let mut row = 0;
-    for right in solid_harmonics(lb) {
-        for left in solid_harmonics(la) {
+    for right in hermite::harmonic_terms(lb) {
+        for left in hermite::harmonic_terms(la) {
             for tb in right {
                 for ta in left {
                     let c = factor * ta.coefficient * tb.coefficient;

@@ -4,6 +4,8 @@
 //! Triples (t, u, v) are stored by rising degree t + u + v; within a degree t falls first, then u.
 //! The triples up to degree d therefore form a prefix of the list of any higher degree.
 
+use crate::basis::MAX_AUXILIARY_L;
+use crate::basis::harmonics::{cartesian_powers, solid_harmonics};
 use crate::numeric::boys::MAX_ORDER;
 use std::sync::LazyLock;
 
@@ -76,6 +78,43 @@ pub fn triples(degree: usize) -> impl Iterator<Item = [usize; 3]> {
             .rev()
             .flat_map(move |t| (0..=d - t).rev().map(move |u| [t, u, d - t - u]))
     })
+}
+
+/// One term of a solid harmonic: coefficient × x^i y^j z^k.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Term {
+    /// i, j, k.
+    pub powers: [usize; 3],
+    /// Factor.
+    pub coefficient: f64,
+}
+
+static HARMONICS: LazyLock<Vec<Vec<Vec<Term>>>> = LazyLock::new(|| {
+    let terms = |row: nalgebra::DVector<f64>, l: usize| {
+        cartesian_powers(l)
+            .into_iter()
+            .zip(row.iter().copied())
+            .filter(|(_, coefficient)| *coefficient != 0.0)
+            .map(|(powers, coefficient)| Term {
+                powers,
+                coefficient,
+            })
+            .collect()
+    };
+    (0..=MAX_AUXILIARY_L)
+        .map(|l| {
+            let matrix = solid_harmonics(l);
+            matrix.row_iter().map(|row| terms(row.transpose(), l)).collect()
+        })
+        .collect()
+});
+
+/// The nonzero terms of the solid harmonics of degree `l`, m from −l to l.
+///
+/// # Panics
+/// If `l` exceeds [`MAX_AUXILIARY_L`].
+pub fn harmonic_terms(l: usize) -> &'static [Vec<Term>] {
+    &HARMONICS[l]
 }
 
 #[cfg(test)]

@@ -15,7 +15,6 @@ use super::hermite;
 use super::targets::{Block, Targets};
 use crate::basis::MAX_AUXILIARY_L;
 use crate::numeric::boys;
-use crate::numeric::harmonics::solid_harmonics;
 use crate::numeric::lanes::{Eight, Kernel, Lanes, dispatch};
 use pulp::Simd;
 use std::sync::LazyLock;
@@ -64,10 +63,10 @@ static HARMONICS: LazyLock<Vec<Harmonics>> = LazyLock::new(|| {
             let monomials: Vec<_> = hermite::triples(l)
                 .filter(|m| m.iter().sum::<usize>() == l)
                 .collect();
-            let components = solid_harmonics(l)
+            let components = hermite::harmonic_terms(l)
                 .iter()
                 .map(|harmonic| {
-                    let term = |t: &crate::numeric::harmonics::Monomial| Term {
+                    let term = |t: &hermite::Term| Term {
                         monomial: monomials
                             .iter()
                             .position(|m| *m == t.powers)

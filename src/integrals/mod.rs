@@ -9,7 +9,7 @@
 //!
 //! # Conventions
 //! Atomic units. Orbital shells to g, auxiliary shells to h. Functions of a shell from m = −l to
-//! m = +l, harmonics as in [`crate::numeric::harmonics`]. Matrices are functions × functions and
+//! m = +l, harmonics as in [`crate::basis::harmonics`]. Matrices are functions × functions and
 //! exactly symmetric. All results are the same to the last bit for any number of threads.
 
 pub mod coulomb;

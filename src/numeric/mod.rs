@@ -1,6 +1,5 @@
 //! Numerical methods that know nothing of molecules or spectra.
 
 pub mod boys;
-pub mod harmonics;
 pub mod lanes;
 pub mod linalg;

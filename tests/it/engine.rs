@@ -1,1 +1,4 @@
-//! See the head of `main.rs`.
+//! The molecular-orbital engine: integrals and the self-consistent field.
+
+#[path = "engine/integrals.rs"]
+mod integrals;
