@@ -106,6 +106,8 @@ pub(super) fn candidate_frames<'a>(
             .iter()
             .filter(|a| a.dot(z).abs() < 0.2)
             .map(|a| (a - z * z.dot(a)).normalize())
+            // A mirror's normal, or a direction in the mirror.
+            .flat_map(|a| [a, z.cross(&a)])
             .collect();
         if across.is_empty() {
             let x = [Vector3::x(), Vector3::y()]

@@ -33,6 +33,9 @@ pub const DEFAULT_TOLERANCE_ANGSTROM: f64 = 0.01;
 /// given up.
 const MATCH_LIMIT: f64 = 0.5;
 
+/// Frames whose misfits differ by less than this fit equally well.
+const SAME_MISFIT: f64 = 0.02;
+
 /// A symmetry operation about the origin of the group.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Operation {
@@ -253,14 +256,18 @@ fn bent(molecule: &Molecule, body: &Body, tolerance: f64) -> Laid {
     // Two atoms off by the tolerance in opposite directions are twice as far from each other.
     let mut found = search::operations(body, 2.0 * tolerance);
     loop {
+        if found.len() == 1 {
+            let stay = |_| found[0].permutation.clone();
+            return Laid::new(Schoenflies::C1, Matrix3::identity(), body, stay);
+        }
         if search::is_closed(&found)
             && let Some(laid) = lay(molecule, body, &found)
-            && (laid.deviation <= tolerance || found.len() == 1)
+            && laid.deviation <= tolerance
         {
             return laid;
         }
         // Sorted by error. An operation and its inverse have nearly the same: if only one goes,
-        // the rest is not closed, and the other follows.
+        // the rest is not closed, and the other follows. The identity stays.
         found.pop();
     }
 }
@@ -277,10 +284,17 @@ fn lay(molecule: &Molecule, body: &Body, found: &[search::Found]) -> Option<Laid
             Some((rotation, places, misfit))
         })
         .collect();
-    let (rotation, places, _) = fits.into_iter().min_by(|a, b| a.2.total_cmp(&b.2))?;
+    let closest = fits.iter().map(|fit| fit.2).fold(f64::INFINITY, f64::min);
+    let (rotation, places, _) = fits
+        .into_iter()
+        .filter(|fit| fit.2 < closest + SAME_MISFIT)
+        .max_by(|a, b| a.0.trace().total_cmp(&b.0.trace()))?;
     let first = Laid::new(symbol, rotation, body, |k| {
         found[places[k]].permutation.clone()
     });
+    if frame::preference(symbol, molecule, &first.symmetric).is_empty() {
+        return Some(first);
+    }
     // Now that the operations are exact, choose among the frames in which they look the same.
     let mut best: Option<(Vec<f64>, Matrix3<f64>, Vec<usize>)> = None;
     for turn in frame::candidate_frames(ideal.operations.iter()) {
@@ -312,3 +326,6 @@ fn is_better(key: &[f64], other: &[f64]) -> bool {
         .find(|(a, b)| (*a - *b).abs() > 1e-3 * a.abs().max(1.0))
         .is_some_and(|(a, b)| a > b)
 }
+
+#[cfg(test)]
+mod tests;
