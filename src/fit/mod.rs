@@ -58,13 +58,6 @@ impl Default for FitOptions {
     }
 }
 
-impl FitError {
-    /// Whether the input was fine and the calculation did not come to rest.
-    pub fn is_not_converged(&self) -> bool {
-        matches!(self, FitError::Solver(solver::SolverError::NotConverged(_)))
-    }
-}
-
 /// How far a fit has come.
 #[derive(Debug, Clone, PartialEq)]
 pub struct FitStep {
