@@ -19,6 +19,7 @@ use super::text::{character, numbered_lines};
 use super::words;
 use super::{DecimalMark, Delimiter, ReadOptions};
 
+pub(super) use write::exact;
 pub use write::write_delimited;
 
 /// Reads the text as one record.
@@ -53,8 +54,11 @@ pub(super) fn read(text: &str, source: &str, options: &ReadOptions) -> Result<Re
     };
     let mut record = reading.rows(text, &stated)?;
 
-    let about = reading.meaning(&stated)?;
-    (record.meaning, record.meaning_from) = about;
+    (record.meaning, record.meaning_from) = reading.meaning(&stated);
+    if let Some(name) = layout.names.get(columns.energy) {
+        record.foreign_unit = words::foreign_unit(name, words::meaning(name));
+    }
+    record.abscissa_line = layout.line;
     record.axis = stated
         .axis()
         .map_err(|problem| TraceError::file(source, problem))?;
@@ -432,24 +436,11 @@ impl Reading<'_> {
     }
 
     /// What the axis column is by the header, else by the comments if all that speak agree.
-    fn meaning(&self, stated: &Stated) -> Result<(Meaning, String), TraceError> {
+    fn meaning(&self, stated: &Stated) -> (Meaning, String) {
         if let Some(name) = self.layout.names.get(self.columns.energy) {
             let meaning = words::meaning(name);
-            if let Some((unit, expected)) = words::foreign_unit(name, meaning)
-                && !stated.ours
-            {
-                let problem = Problem::Unit {
-                    column: name.clone(),
-                    unit,
-                    expected,
-                };
-                return Err(TraceError {
-                    line: self.layout.line,
-                    ..TraceError::file(self.source, problem)
-                });
-            }
             if meaning != Meaning::Unsaid {
-                return Ok((meaning, format!("its header '{name}'")));
+                return (meaning, format!("its header '{name}'"));
             }
         }
         let spoken = stated
@@ -462,9 +453,9 @@ impl Reading<'_> {
         let spoken: Vec<(usize, Meaning)> = spoken.collect();
         match spoken[..] {
             [(line, meaning), ..] if spoken.iter().all(|s| s.1 == meaning) => {
-                Ok((meaning, format!("the comment in line {line}")))
+                (meaning, format!("the comment in line {line}"))
             }
-            _ => Ok((Meaning::Unsaid, String::new())),
+            _ => (Meaning::Unsaid, String::new()),
         }
     }
 }
