@@ -193,6 +193,7 @@ fn read_overrides(read: &ReadArguments) -> Vec<String> {
     let window = (read.window.as_ref())
         .map(|w| toml::Value::from(w.clone()).to_string());
     [
+        key("choice", choice(&read.choice)),
         key("axis", axis),
         key("photon_energy_ev", number(read.photon_energy)),
         key("energy_column", choice(&read.energy_column)),

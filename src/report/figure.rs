@@ -7,10 +7,9 @@
 
 use super::axes::Scale;
 use super::canvas::{Anchor, Canvas, Ink, TextBox, Type, width};
-use super::panels;
-use super::render;
 use super::words::{Words, chemical};
 use super::{Dossier, Overlay, ReportError};
+use super::{legend, panels, render, sticks};
 use crate::assign::{Remark, RemarkKind};
 use crate::fit::Band;
 
@@ -173,7 +172,7 @@ impl Figure {
         panels::trace(&mut ink, &scene, [top, top + TRACE_HEIGHT]);
         top += TRACE_HEIGHT;
         if overlay.sticks.iter().any(|s| scene.x.holds(s.shifted_ev)) {
-            top = super::sticks::draw(&mut ink, &scene, top + PANEL_GAP);
+            top = sticks::draw(&mut ink, &scene, top + PANEL_GAP);
         }
         draw_axis(&mut ink, &scene, top);
         let size = [PAGE_WIDTH, top + AXIS_HEIGHT];
@@ -224,8 +223,8 @@ fn span(overlay: &Overlay) -> Option<[f64; 2]> {
 
 fn draw_heading(ink: &mut Canvas, heading: &Heading, scene: &Scene<'_>) -> f64 {
     let [left, right] = scene.edges;
-    let title = chemical(&heading.title);
-    let details = Words::from(heading.details.as_str());
+    let title = chemical(&cut(&heading.title, TITLE, right - left));
+    let details = Words::from(cut(&heading.details, SMALL, right - left));
     let mut base = 15.0;
     ink.text([left, base], Anchor::Start, &title, TITLE);
     if width(&title, TITLE) + width(&details, SMALL) + 12.0 > right - left {
@@ -233,7 +232,17 @@ fn draw_heading(ink: &mut Canvas, heading: &Heading, scene: &Scene<'_>) -> f64 {
     }
     ink.text([right, base], Anchor::End, &details, SMALL);
     base += 13.0;
-    panels::legend(ink, scene, [left, base]) + 7.0
+    legend::draw(ink, scene, [left, base]) + 7.0
+}
+
+/// As much of a text as there is room for.
+fn cut(text: &str, style: Type, room: f64) -> String {
+    let mut shown = text.to_owned();
+    let mut letters: Vec<char> = text.chars().collect();
+    while width(&Words::from(shown.as_str()), style) > room && letters.pop().is_some() {
+        shown = letters.iter().chain(&['…']).collect();
+    }
+    shown
 }
 
 fn draw_axis(ink: &mut Canvas, scene: &Scene<'_>, top: f64) {

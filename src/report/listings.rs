@@ -5,12 +5,16 @@ use super::prose;
 use super::table::{Lean, Table};
 use super::words::{
     Words, chemical, counted, decimals, energy, measured, orbital, percent, signed, thousands,
+    wrapped,
 };
 use crate::assign::Match;
 use crate::fit::{Band, BandFit, FitStatistics};
 use crate::levels::{Character, HoleState, Levels, LineKind};
 
 use Lean::{Left, Right};
+
+/// Width of running text on a terminal, characters.
+const LINE: usize = 88;
 
 fn words(text: impl Into<String>) -> Words {
     Words::from(text.into())
@@ -85,7 +89,7 @@ pub fn levels_table(levels: &Levels) -> String {
         scf.energy_hartree,
         counted(scf.iterations, "iteration"),
         hole_states(levels).text(),
-        prose::level_limits(levels.level.method),
+        wrapped(prose::level_limits(levels.level.method), LINE),
     )
 }
 
@@ -137,7 +141,7 @@ pub fn bands(bands: &[Band]) -> Table {
 /// other groupings with their odds, how good the fit is.
 pub fn bands_table(fit: &BandFit) -> String {
     let Some(first) = fit.groupings.first() else {
-        return format!("No bands.\n{}\n", fit_line(&fit.statistics));
+        return format!("No bands.\n{}\n", quality(&fit.statistics));
     };
     let mut out = bands(&first.bands).text();
     out.push('\n');
@@ -160,19 +164,19 @@ pub fn bands_table(fit: &BandFit) -> String {
             ));
         }
     }
-    out.push_str(&fit_line(&fit.statistics));
+    out.push_str(&quality(&fit.statistics));
     out.push('\n');
     for note in prose::fit_notes(&fit.undetermined, &fit.correlations) {
         out.push_str(&note);
         out.push('\n');
     }
-    out.push_str(prose::WORDS_OF_ENERGY);
+    out.push_str(&wrapped(prose::WORDS_OF_ENERGY, LINE));
     out.push('\n');
     out
 }
 
-fn fit_line(statistics: &FitStatistics) -> String {
-    prose::fit_quality(statistics)
+fn quality(statistics: &FitStatistics) -> String {
+    wrapped(&prose::fit_quality(statistics), LINE)
 }
 
 /// The computed states that a match names, in its order.
@@ -335,9 +339,10 @@ pub fn assignment_table(dossier: &Dossier) -> String {
     }
     let mut out = table.without_empty_columns().text();
     for remark in &dossier.remarks {
-        out.push_str(&format!("\n† {}\n", remark.text));
+        let text = wrapped(&format!("† {}", remark.text), LINE);
+        out.push_str(&format!("\n{text}\n"));
     }
-    out.push_str(&format!("\n{}\n", prose::shift(dossier)));
+    out.push_str(&format!("\n{}\n", wrapped(&prose::shift(dossier), LINE)));
     out
 }
 

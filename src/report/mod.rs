@@ -9,6 +9,8 @@ mod canvas;
 mod dossier;
 mod figure;
 mod files;
+mod legend;
+mod lines;
 mod listings;
 mod markdown;
 mod page;

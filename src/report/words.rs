@@ -275,6 +275,25 @@ pub fn thousands(value: f64) -> String {
     out
 }
 
+/// The text in lines of at most `width` characters, broken at blanks.
+pub fn wrapped(text: &str, width: usize) -> String {
+    let mut out = String::new();
+    let mut used = 0;
+    for word in text.split_whitespace() {
+        let length = word.chars().count();
+        if used > 0 && used + 1 + length > width {
+            out.push('\n');
+            used = 0;
+        } else if used > 0 {
+            out.push(' ');
+            used += 1;
+        }
+        out.push_str(word);
+        used += length;
+    }
+    out
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -335,5 +354,11 @@ mod tests {
         assert_eq!(percent(0.0), "< 1 %");
         assert_eq!(thousands(-1234567.0), "−1\u{202f}234\u{202f}567");
         assert_eq!(thousands(999.0), "999");
+    }
+
+    #[test]
+    fn lines_are_broken_at_blanks() {
+        assert_eq!(wrapped("one two  three four", 9), "one two\nthree\nfour");
+        assert_eq!(wrapped("unbreakable", 4), "unbreakable");
     }
 }

@@ -7,10 +7,10 @@ use crate::assign::Assignment;
 use crate::fit::Grouping;
 use crate::levels::{Levels, LineKind};
 use crate::report::{
-    AssignmentSummary, BandCurve, Dossier, FitSummary, GroupingOdds, Overlay, OverlayStick, SCHEMA,
+    AssignmentSummary, BandCurve, Dossier, FitSummary, Overlay, OverlayStick, SCHEMA,
     TraceSummary,
 };
-use crate::trace::{Axis, Trace};
+use crate::trace::Axis;
 
 /// Puts a finished study on record.
 pub(super) fn fill(
@@ -32,28 +32,10 @@ pub(super) fn fill(
         program: PROGRAM.to_owned(),
         title: settings.name.clone(),
         study,
-        trace: trace_summary(&measured.trace),
+        trace: TraceSummary::of(&measured.trace),
         bands: grouping.bands.clone(),
-        fit: FitSummary {
-            groupings: (measured.fit.groupings.iter())
-                .map(|g| GroupingOdds {
-                    probability: g.probability,
-                    vertical_ev: g.bands.iter().map(|b| b.vertical_ev).collect(),
-                })
-                .collect(),
-            statistics: measured.fit.statistics,
-            peaks: measured.fit.peaks,
-            undetermined: measured.fit.undetermined,
-            correlations: measured.fit.correlations,
-        },
-        assignment: AssignmentSummary {
-            grouping: assignment.grouping,
-            grouping_probability: assignment.grouping_probability,
-            shift_ev: assignment.shift_ev,
-            shift_sd_ev: assignment.shift_sd_ev,
-            scale: assignment.scale,
-            unseen: assignment.unseen,
-        },
+        fit: FitSummary::of(&measured.fit),
+        assignment: AssignmentSummary::of(&assignment),
         levels,
         matches: assignment.matches,
         remarks: assignment.remarks,
@@ -109,16 +91,4 @@ fn sticks(levels: &Levels, assignment: &Assignment) -> Vec<OverlayStick> {
             verdict: state.character.verdict,
         })
         .collect()
-}
-
-pub(super) fn trace_summary(trace: &Trace) -> TraceSummary {
-    TraceSummary {
-        source: trace.source.clone(),
-        channels: trace.len(),
-        span_ev: trace.span_ev(),
-        photon_energy_ev: trace.photon_energy_ev,
-        axis: trace.axis,
-        noise: trace.noise,
-        comments: trace.comments.clone(),
-    }
 }

@@ -18,6 +18,7 @@ use crate::ionization::IonizationError;
 use crate::lineshape::ShapeError;
 use crate::molecule::GeometryError;
 use crate::orbitals::CharacterError;
+use crate::orbitals::irreps::IrrepError;
 use crate::report::ReportError;
 use crate::scf::ScfError;
 use crate::trace::TraceError;
@@ -83,6 +84,9 @@ pub enum StudyError {
     /// The orbitals cannot be analysed.
     #[error(transparent)]
     Character(#[from] CharacterError),
+    /// The orbitals cannot be labelled.
+    #[error(transparent)]
+    Labels(#[from] IrrepError),
     /// Hole states cannot be made.
     #[error(transparent)]
     Ionization(#[from] IonizationError),

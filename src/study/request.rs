@@ -51,6 +51,8 @@ pub struct MoleculeRequest {
 pub struct TraceRequest {
     /// Measured file, relative to the study file.
     pub file: Option<PathBuf>,
+    /// Which trace of the file, by name or number from 1, where it holds several.
+    pub choice: Option<Choice>,
     /// `ionization`, `kinetic`, `wavenumber` or `flight-time`; read from the file if absent.
     pub axis: Option<AxisName>,
     /// Photon energy, eV.

@@ -180,6 +180,7 @@ impl TraceSettings {
             path: base.join(&file),
             file,
             read: ReadOptions {
+                trace: request.choice.clone(),
                 axis,
                 photon_energy_ev: request.photon_energy_ev.map(Into::into),
                 energy_column: request.energy_column.clone(),

@@ -3,11 +3,12 @@
 //! With `BANDPROOF_FIGURES=folder` the figures are kept in that folder, to be looked at.
 
 mod invented;
+mod recipe;
 
 use bandproof::report::{
     self, BandCurve, Direction, Dossier, Figure, FitSummary, Heading, Overlay, ReportError, TextBox,
 };
-use invented::{crowded, dense, empty, large, one_band, sulfide};
+use invented::{crowded, dense, empty, large, one_band, random, sulfide};
 use std::path::Path;
 
 fn keep(name: &str, figure: &Figure) {
@@ -80,6 +81,14 @@ fn no_text_covers_another_in_any_figure() {
         check(name, &Figure::of(&dossier).unwrap());
         dossier.overlay.direction = Direction::Falling;
         check(&format!("{name}_falling"), &Figure::of(&dossier).unwrap());
+    }
+}
+
+#[test]
+fn no_text_covers_another_in_random_figures() {
+    for seed in 0..60 {
+        let figure = Figure::of(&random(seed)).unwrap();
+        check(&format!("random_{seed}"), &figure);
     }
 }
 
