@@ -287,21 +287,23 @@ impl Outcome<'_> {
             100.0 * exchanged,
         );
         let apart = states[a].computed_ev - states[b].computed_ev;
-        let mut text = order;
-        if reversed {
-            text.push_str(&format!(
-                " {} computes the reverse order, but its known errors outweigh the {apart:.2} eV \
-                 between them.",
-                self.level
-            ));
-        }
-        if exchanged >= ORDER_IN_DOUBT {
-            text.push_str(&format!(
-                " {} cannot decide it; a level with electron correlation, or the bands' \
-                 vibrational structure, would.",
-                self.level
-            ));
-        }
+        let doubt = exchanged >= ORDER_IN_DOUBT;
+        let level = &self.level;
+        let text = match (reversed, doubt) {
+            (true, false) => format!(
+                "{order} {level} computes the reverse order, but its known errors outweigh the \
+                 {apart:.2} eV between them."
+            ),
+            (true, true) => format!(
+                "{order} {level} computes the reverse order, {apart:.2} eV apart, less than its \
+                 known errors. A level with electron correlation, or the bands' vibrational \
+                 structure, would decide."
+            ),
+            _ => format!(
+                "{order} {level} cannot decide it; a level with electron correlation, or the \
+                 bands' vibrational structure, would."
+            ),
+        };
         Some(Remark {
             kind: RemarkKind::OpenOrder,
             position_ev: 0.5 * (first.vertical_ev + second.vertical_ev),

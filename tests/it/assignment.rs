@@ -250,6 +250,69 @@ fn nitrogen_in_the_cell_is_told_from_hydrogen_sulfide() {
     planted("H2S", line, RemarkKind::ForeignGas, "N2 X v=0", [9.0, 18.0]);
 }
 
+/// A resolved band: members at the given places and areas.
+fn progression(members: &[(f64, f64)]) -> Band {
+    let area: f64 = members.iter().map(|m| m.1).sum();
+    let vertical = members.iter().map(|m| m.0 * m.1).sum::<f64>() / area;
+    let top = members.iter().max_by(|a, b| a.1.total_cmp(&b.1)).unwrap();
+    let mut made = band(vertical, area, 0.05);
+    made.maximum_ev = top.0;
+    made.origin_ev = Some(members[0].0);
+    made.members = (members.iter())
+        .map(|(place, area)| bandproof::fit::Member {
+            peak: 0,
+            position_ev: *place,
+            position_sd: 0.003,
+            area: *area,
+            area_sd: 0.03 * area,
+        })
+        .collect();
+    made
+}
+
+#[test]
+fn a_calibration_gas_is_found_whole() {
+    // N2 as strong as the sample, lines from memory (Huber and Herzberg 1979), scale off by 20 meV.
+    let off = 0.02;
+    let x = [(15.5808 + off, 900.0), (15.8505 + off, 70.0)];
+    let a = [
+        (16.6987, 350.0),
+        (16.9306, 420.0),
+        (17.1588, 290.0),
+        (17.3844, 150.0),
+    ];
+    let a = a.map(|(place, area)| (place + off, area));
+    let b = [(18.7507 + off, 230.0), (19.0449 + off, 30.0)];
+    let grouped = vec![progression(&x), progression(&a), progression(&b)];
+    let single = x
+        .iter()
+        .chain(&a)
+        .chain(&b)
+        .map(|(e, area)| band(*e, *area, 0.05))
+        .collect();
+    for lines in [grouped, single] {
+        let places: Vec<f64> = lines.iter().map(|l: &Band| l.vertical_ev).collect();
+        let mut bands = published("H2S");
+        bands.extend(lines);
+        let group = grouping(bands);
+        let outcome = assign(std::slice::from_ref(&group), &levels("H2S", true), &he_i()).unwrap();
+        let foreign: Vec<f64> = (outcome.remarks.iter())
+            .filter(|r| r.kind == RemarkKind::ForeignGas)
+            .filter(|r| r.candidates[0].cause.starts_with("N2"))
+            .map(|r| group.bands[r.band.unwrap() - 1].vertical_ev)
+            .collect();
+        let told: Vec<&str> = outcome.remarks.iter().map(|r| r.text.as_str()).collect();
+        assert_eq!(foreign, places, "{told:#?}");
+        assert_eq!(outcome.remarks.len(), places.len(), "{told:#?}");
+        let shown: Vec<_> = outcome
+            .matches
+            .iter()
+            .flat_map(|m| m.hole_states.clone())
+            .collect();
+        assert_eq!(shown, ["2b1", "5a1", "2b2"]);
+    }
+}
+
 #[test]
 fn water_in_the_cell_is_told_from_furan() {
     // H2O X (000) at 12.6188 eV (NIST WebBook).
