@@ -274,7 +274,7 @@ pub(super) fn anchor_ev(band: &Band) -> f64 {
 
 /// Whether `other`, a line of the same gas, should be a band of its own if band `at` is `line`:
 /// strong enough to be found, inside the window, and not hidden under another band.
-fn ought_to_show(
+pub(super) fn ought_to_show(
     bands: &[&Band],
     data: &[Datum],
     at: usize,

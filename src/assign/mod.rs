@@ -14,6 +14,7 @@ mod chart;
 mod decode;
 mod evidence;
 mod foreign;
+mod grid;
 mod likelihood;
 mod posterior;
 mod prior;

@@ -199,7 +199,7 @@ impl Prior {
 fn check(state: &HoleState) -> Result<(), AssignError> {
     let energy = state.ionization_energy_ev;
     let strength = state.pole_strength;
-    if !energy.is_finite() || !(strength > 0.0 && strength <= 1.0 + 1e-6) {
+    if !energy.is_finite() || !(0.0..=1.0 + 1e-6).contains(&strength) || strength == 0.0 {
         return Err(AssignError::State {
             label: state.label.clone(),
             energy_ev: energy,

@@ -1,7 +1,7 @@
 //! What the one-electron picture does not explain, in words.
 
 use super::decode;
-use super::foreign::{Cause, Surroundings, Suspect, covers};
+use super::foreign::{Cause, Surroundings, Suspect, covers, ought_to_show};
 use super::likelihood::Comparison;
 use super::prior::scatter_below;
 use super::reading::Reading;
@@ -147,10 +147,22 @@ impl Outcome<'_> {
             .map(|l| l.line.clone())
             .collect();
         let hidden = others().any(|l| self.reading.bands.iter().any(|b| covers(b, l.energy_ev)));
+        let prior = self.comparison.prior;
+        let absent: Vec<&str> = others()
+            .filter(|l| l.shape == "line")
+            .filter(|l| ought_to_show(&self.reading.bands, &self.reading.data, at, prior, line, l))
+            .map(|l| l.line.as_str())
+            .collect();
         if !seen.is_empty() {
             text.push_str(&format!(" Its {} is seen too.", seen.join(", ")));
         } else if hidden {
             text.push_str(" Its other lines would lie under bands of the molecule.");
+        }
+        if !absent.is_empty() {
+            text.push_str(&format!(
+                " Against it: {} should be seen as well and is not.",
+                absent.join(", ")
+            ));
         }
         text.push_str(" A run after pumping, or with the gas added, would settle it.");
         text
@@ -274,19 +286,23 @@ impl Outcome<'_> {
             100.0 * kept,
             100.0 * exchanged,
         );
-        let text = if reversed {
-            format!(
-                "{order} {} computes the reverse order, but its known errors outweigh the {:.2} eV \
-                 between them.",
-                self.level,
-                states[a].computed_ev - states[b].computed_ev
-            )
-        } else {
-            format!(
-                "{order} {} cannot decide it; a level with electron correlation, or the bands' \
-                 vibrational structure, would.",
-                self.level
-            )
+        let apart = states[a].computed_ev - states[b].computed_ev;
+        let doubt = exchanged >= ORDER_IN_DOUBT;
+        let level = &self.level;
+        let text = match (reversed, doubt) {
+            (true, false) => format!(
+                "{order} {level} computes the reverse order, but its known errors outweigh the \
+                 {apart:.2} eV between them."
+            ),
+            (true, true) => format!(
+                "{order} {level} computes the reverse order, {apart:.2} eV apart, less than its \
+                 known errors. A level with electron correlation, or the bands' vibrational \
+                 structure, would decide."
+            ),
+            _ => format!(
+                "{order} {level} cannot decide it; a level with electron correlation, or the \
+                 bands' vibrational structure, would."
+            ),
         };
         Some(Remark {
             kind: RemarkKind::OpenOrder,

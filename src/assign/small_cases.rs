@@ -2,8 +2,9 @@
 
 use super::assign;
 use super::chart::{Chart, LARGEST_SET, WAITING, allowed_gaps, may_share, may_wait};
+use super::grid::Grid;
 use super::likelihood::{Comparison, Datum, instrument_width_ev};
-use super::posterior::{Grid, Weights, solve, total};
+use super::posterior::{Weights, solve, total};
 use super::prior::Prior;
 use super::sample::{band, conditions, grouping, levels, state};
 use crate::fit::Band;

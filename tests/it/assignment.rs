@@ -1,224 +1,15 @@
 //! Real molecules: Koopmans levels beside published bands. Foreign lines and lamp ghosts planted
 //! by hand. Odd input.
 
+mod published;
+
 use bandproof::assign::{AssignError, Assignment, Conditions, RemarkKind, assign};
-use bandproof::fit::{Band, Grouping, Member};
-use bandproof::levels::{
-    AtomLine, AtomShare, Character, HoleState, Level, Levels, LineKind, Method, MoleculeSummary,
-    SCHEMA, ScfSummary, Verdict,
-};
-use bandproof::units::hartree_to_ev;
+use bandproof::fit::{Band, Grouping};
+use bandproof::levels::Levels;
+use published::{BandRow, MOLECULES, band, band_rows, grouping, he_i, levels, published};
 use rand::{Rng, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 use rand_distr::{Distribution, StandardNormal};
-use serde::Deserialize;
-
-#[derive(Deserialize)]
-struct LevelRow {
-    molecule: String,
-    label: String,
-    energy_hartree: f64,
-    degeneracy: usize,
-    verdict: Verdict,
-    pi: u8,
-    net: f64,
-    nof: f64,
-}
-
-#[derive(Deserialize, Clone)]
-struct BandRow {
-    molecule: String,
-    vertical_ev: f64,
-    adiabatic_ev: Option<f64>,
-    orbitals: String,
-    confidence: String,
-}
-
-fn rows<T: for<'a> Deserialize<'a>>(text: &str) -> Vec<T> {
-    let mut reader = csv::ReaderBuilder::new()
-        .comment(Some(b'#'))
-        .from_reader(text.as_bytes());
-    reader.deserialize().map(|row| row.unwrap()).collect()
-}
-
-fn level_rows() -> Vec<LevelRow> {
-    rows(include_str!("../data/assignment/levels.csv"))
-}
-
-fn band_rows(molecule: &str) -> Vec<BandRow> {
-    let all: Vec<BandRow> = rows(include_str!("../data/assignment/bands.csv"));
-    all.into_iter()
-        .filter(|row| row.molecule == molecule)
-        .collect()
-}
-
-const MOLECULES: [(&str, &str); 19] = [
-    ("H2O", "H2O"),
-    ("H2S", "H2S"),
-    ("NH3", "H3N"),
-    ("CH4", "CH4"),
-    ("HF", "FH"),
-    ("HCl", "ClH"),
-    ("N2", "N2"),
-    ("CO", "CO"),
-    ("CO2", "CO2"),
-    ("N2O", "N2O"),
-    ("HCN", "CHN"),
-    ("C2H2", "C2H2"),
-    ("C2H4", "C2H4"),
-    ("butadiene", "C4H6"),
-    ("H2CO", "CH2O"),
-    ("CH3OH", "CH4O"),
-    ("furan", "C4H4O"),
-    ("pyridine", "C5H5N"),
-    ("benzene", "C6H6"),
-];
-
-/// Koopmans levels of a molecule. Atom 0 stands for all N, O and F atoms, atom 1 for the rest.
-fn levels(molecule: &str, described: bool) -> Levels {
-    let formula = MOLECULES
-        .iter()
-        .find(|m| m.0 == molecule)
-        .map_or("", |m| m.1);
-    let share = |atom, name: &str, share| AtomShare {
-        atom,
-        name: name.to_string(),
-        share,
-    };
-    let mut hole_states: Vec<HoleState> = (level_rows().into_iter())
-        .filter(|row| row.molecule == molecule)
-        .map(|row| HoleState {
-            label: row.label.clone(),
-            ionization_energy_ev: -hartree_to_ev(row.energy_hartree),
-            koopmans_ev: -hartree_to_ev(row.energy_hartree),
-            pole_strength: 1.0,
-            degeneracy: row.degeneracy,
-            kind: LineKind::Main,
-            leading_orbitals: Vec::new(),
-            character: Character {
-                verdict: row.verdict,
-                description: match (described, row.pi == 1) {
-                    (true, true) => "π".to_string(),
-                    (true, false) => "σ".to_string(),
-                    (false, _) => String::new(),
-                },
-                net_overlap_population: row.net,
-                atoms: vec![share(0, "O1", row.nof), share(1, "C2", 1.0 - row.nof)],
-                bonds: Vec::new(),
-            },
-            envelope: None,
-        })
-        .collect();
-    if !described {
-        hole_states
-            .iter_mut()
-            .for_each(|s| s.label = s.label.replace('π', "p"));
-    }
-    hole_states.sort_by(|a, b| a.ionization_energy_ev.total_cmp(&b.ionization_energy_ev));
-    let atom = |element: &str| AtomLine {
-        element: element.to_string(),
-        x: 0.0,
-        y: 0.0,
-        z: 0.0,
-    };
-    Levels {
-        schema: SCHEMA.to_string(),
-        program: String::new(),
-        molecule: MoleculeSummary {
-            name: molecule.to_string(),
-            formula: formula.to_string(),
-            charge: 0,
-            multiplicity: 1,
-            point_group: None,
-            atoms: vec![atom("O"), atom("C")],
-        },
-        level: Level {
-            method: Method::Koopmans,
-            basis: "def2-tzvp".to_string(),
-            auxiliary: "def2-universal-jkfit".to_string(),
-            frozen_core: false,
-        },
-        scf: ScfSummary {
-            energy_hartree: 0.0,
-            nuclear_repulsion_hartree: 0.0,
-            iterations: 1,
-            converged: true,
-            dipole_debye: [0.0; 3],
-        },
-        orbitals: Vec::new(),
-        hole_states,
-    }
-}
-
-fn band(vertical: f64, area: f64, fwhm: f64) -> Band {
-    let (position_sd, area_sd) = (0.005, 0.03 * area);
-    Band {
-        id: 0,
-        vertical_ev: vertical,
-        vertical_sd: position_sd,
-        maximum_ev: vertical,
-        origin_ev: None,
-        area,
-        area_sd,
-        fwhm_ev: fwhm,
-        spacing_ev: None,
-        significance: 300.0,
-        peaks: vec![0],
-        members: vec![Member {
-            peak: 0,
-            position_ev: vertical,
-            position_sd,
-            area,
-            area_sd,
-        }],
-    }
-}
-
-/// Sorted and numbered.
-fn grouping(mut bands: Vec<Band>) -> Grouping {
-    bands.sort_by(|a, b| a.vertical_ev.total_cmp(&b.vertical_ev));
-    for (n, band) in bands.iter_mut().enumerate() {
-        band.id = n + 1;
-        band.members.iter_mut().for_each(|m| m.peak = n);
-    }
-    Grouping {
-        probability: 1.0,
-        bands,
-    }
-}
-
-/// Bands of a molecule: published positions; 1,000 counts per orbital times a factor between 0.6
-/// and 1.6 that runs through the list; width from vertical minus adiabatic where both are known.
-fn published(molecule: &str) -> Vec<Band> {
-    let degeneracy = |label: &str| {
-        let row = level_rows()
-            .into_iter()
-            .find(|r| r.molecule == molecule && r.label == label);
-        row.map_or(1, |r| r.degeneracy)
-    };
-    let factors = [1.2, 0.7, 1.0, 1.6, 0.6, 1.4, 0.9];
-    let list = band_rows(molecule);
-    let sharing = |orbitals: &str| list.iter().filter(|r| r.orbitals == orbitals).count() as f64;
-    (list.iter().enumerate())
-        .map(|(n, row)| {
-            let orbitals: usize = row.orbitals.split('+').map(degeneracy).sum();
-            let area = 1000.0 * orbitals as f64 / sharing(&row.orbitals) * factors[n % 7];
-            let fwhm = match row.adiabatic_ev {
-                Some(adiabatic) => (1.2 * (row.vertical_ev - adiabatic)).max(0.06),
-                None => 0.4,
-            };
-            band(row.vertical_ev, area, fwhm)
-        })
-        .collect()
-}
-
-fn he_i() -> Conditions {
-    Conditions {
-        photon_energy_ev: Some(21.218),
-        window_ev: [8.0, 20.8],
-        scale_offset_sd_ev: 0.03,
-    }
-}
 
 fn run(levels: &Levels, bands: Vec<Band>) -> Assignment {
     assign(&[grouping(bands)], levels, &he_i()).unwrap()
@@ -457,6 +248,69 @@ fn nitrogen_in_the_cell_is_told_from_hydrogen_sulfide() {
     // N2 X v=0 at 15.581 eV (memory, Huber and Herzberg 1979), on the flank of the 2b2 band.
     let line = band(15.581, 90.0, 0.05);
     planted("H2S", line, RemarkKind::ForeignGas, "N2 X v=0", [9.0, 18.0]);
+}
+
+/// A resolved band: members at the given places and areas.
+fn progression(members: &[(f64, f64)]) -> Band {
+    let area: f64 = members.iter().map(|m| m.1).sum();
+    let vertical = members.iter().map(|m| m.0 * m.1).sum::<f64>() / area;
+    let top = members.iter().max_by(|a, b| a.1.total_cmp(&b.1)).unwrap();
+    let mut made = band(vertical, area, 0.05);
+    made.maximum_ev = top.0;
+    made.origin_ev = Some(members[0].0);
+    made.members = (members.iter())
+        .map(|(place, area)| bandproof::fit::Member {
+            peak: 0,
+            position_ev: *place,
+            position_sd: 0.003,
+            area: *area,
+            area_sd: 0.03 * area,
+        })
+        .collect();
+    made
+}
+
+#[test]
+fn a_calibration_gas_is_found_whole() {
+    // N2 as strong as the sample, lines from memory (Huber and Herzberg 1979), scale off by 20 meV.
+    let off = 0.02;
+    let x = [(15.5808 + off, 900.0), (15.8505 + off, 70.0)];
+    let a = [
+        (16.6987, 350.0),
+        (16.9306, 420.0),
+        (17.1588, 290.0),
+        (17.3844, 150.0),
+    ];
+    let a = a.map(|(place, area)| (place + off, area));
+    let b = [(18.7507 + off, 230.0), (19.0449 + off, 30.0)];
+    let grouped = vec![progression(&x), progression(&a), progression(&b)];
+    let single = x
+        .iter()
+        .chain(&a)
+        .chain(&b)
+        .map(|(e, area)| band(*e, *area, 0.05))
+        .collect();
+    for lines in [grouped, single] {
+        let places: Vec<f64> = lines.iter().map(|l: &Band| l.vertical_ev).collect();
+        let mut bands = published("H2S");
+        bands.extend(lines);
+        let group = grouping(bands);
+        let outcome = assign(std::slice::from_ref(&group), &levels("H2S", true), &he_i()).unwrap();
+        let foreign: Vec<f64> = (outcome.remarks.iter())
+            .filter(|r| r.kind == RemarkKind::ForeignGas)
+            .filter(|r| r.candidates[0].cause.starts_with("N2"))
+            .map(|r| group.bands[r.band.unwrap() - 1].vertical_ev)
+            .collect();
+        let told: Vec<&str> = outcome.remarks.iter().map(|r| r.text.as_str()).collect();
+        assert_eq!(foreign, places, "{told:#?}");
+        assert_eq!(outcome.remarks.len(), places.len(), "{told:#?}");
+        let shown: Vec<_> = outcome
+            .matches
+            .iter()
+            .flat_map(|m| m.hole_states.clone())
+            .collect();
+        assert_eq!(shown, ["2b1", "5a1", "2b2"]);
+    }
 }
 
 #[test]
