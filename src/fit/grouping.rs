@@ -31,6 +31,17 @@ const LN_WIDTH_DENSITY: f64 = 0.35;
 /// Probability that a band's shape takes one more component.
 const COMPONENT: f64 = 0.5;
 
+/// Probability that a resolved progression stands on a floor of its own that is not resolved, and
+/// how much broader than a member such a floor is at least.
+const PEDESTAL: f64 = 0.5;
+const BROADER: f64 = 1.5;
+
+/// How far beyond the last resolved member blurred ones are looked for, eV.
+const BEYOND: f64 = 0.3;
+
+/// Probability that a band shows one member only.
+const SINGLE: f64 = 0.5;
+
 /// Probability that a visible next member is missing all the same.
 const VANISHED: f64 = 0.02;
 
@@ -88,6 +99,16 @@ pub(super) fn readings(
         for group in &reading.groups {
             reading.score += ended(group, lines, visible);
         }
+    }
+    let mut from = 0;
+    while from < beam.len() {
+        // Readings that arise are looked at in their turn: two pedestals may join.
+        let more: Vec<Reading> = beam[from..]
+            .iter()
+            .flat_map(|r| with_pedestals(r, lines))
+            .collect();
+        from = beam.len();
+        beam.extend(more);
     }
     // Different roles of the lines within the same bands are one reading.
     let mut distinct: Vec<(Vec<Vec<usize>>, Reading, Vec<f64>)> = Vec::new();
@@ -195,20 +216,107 @@ fn as_component(group: &Group, line: &LineView, lines: &[LineView]) -> Option<(u
 /// Log probability that a band shows no further member.
 fn ended(group: &Group, lines: &[LineView], visible: &dyn Fn(f64, f64) -> f64) -> f64 {
     let progression = &group.progression;
+    // A line much sharper than the one whose shape it should mend is foreign to it.
+    let sharpness: f64 = progression
+        .members
+        .iter()
+        .flat_map(|m| {
+            let width = m
+                .lines
+                .iter()
+                .map(|&k| lines[k].width * lines[k].area)
+                .sum::<f64>()
+                / m.area;
+            m.lines.iter().map(move |&k| (width / lines[k].width).ln())
+        })
+        .map(|ratio| -0.5 * ((ratio - 0.7).max(0.0) / 0.4).powi(2))
+        .sum();
     if progression.members.len() < 2 {
-        // One member: about half of all bands do not show a second one.
-        return 0.5_f64.ln();
+        return SINGLE.ln() + sharpness;
     }
     let width = lines[group.lines[0]].width;
     let unseen = |position: f64, area: f64| {
         let least = visible(position, width);
+        if least == f64::INFINITY {
+            return 1.0;
+        }
         VANISHED + (1.0 - VANISHED) * normal_cdf((least / area).ln() / 0.8)
     };
     progression
         .expected_next()
         .into_iter()
         .map(|(position, area)| unseen(position, area).ln())
-        .sum()
+        .sum::<f64>()
+        + sharpness
+}
+
+/// Readings in which a broad unresolved band is part of a progression: higher members and other
+/// modes that blur into each other, under the resolved members or beyond the last of them.
+fn with_pedestals(reading: &Reading, lines: &[LineView]) -> Vec<Reading> {
+    let mut merged = Vec::new();
+    for (p, progression) in reading.groups.iter().enumerate() {
+        let members = &progression.progression.members;
+        if members.len() < 2 {
+            continue;
+        }
+        let above = Extent::of(&progression.lines, lines);
+        let line_width = members[0].view.width;
+        let low = members[0].view.position - 0.5 * line_width;
+        let high = members[members.len() - 1].view.position + BEYOND;
+        for (q, pedestal) in reading.groups.iter().enumerate() {
+            let below = Extent::of(&pedestal.lines, lines);
+            if p == q
+                || pedestal.progression.members.len() > 1
+                || !(low..=high).contains(&below.centre)
+                || below.width < BROADER * line_width
+                || below.width > 3.0 * above.width
+            {
+                continue;
+            }
+            let ln_area = (below.area / above.area).ln();
+            let widths = 3.0 * above.width / (BROADER * line_width);
+            let together = PEDESTAL.ln() - (high - low).ln() + ln_normal(ln_area, -1.8, 1.2)
+                - widths.max(2.0).ln().ln();
+            let apart =
+                (IONIZATIONS_PER_EV * LN_AREA_DENSITY * LN_WIDTH_DENSITY).ln() + SINGLE.ln();
+            let mut next = reading.clone();
+            let floor = next.groups[q].lines.clone();
+            next.groups[p].lines.extend(floor);
+            next.groups[p].lines.sort();
+            next.groups.remove(q);
+            next.score += together - apart;
+            merged.push(next);
+        }
+    }
+    merged
+}
+
+/// Centre, width and area of several lines together.
+struct Extent {
+    centre: f64,
+    width: f64,
+    area: f64,
+}
+
+impl Extent {
+    fn of(members: &[usize], lines: &[LineView]) -> Self {
+        let area: f64 = members.iter().map(|&k| lines[k].area).sum();
+        let mean = |f: &dyn Fn(&LineView) -> f64| {
+            members
+                .iter()
+                .map(|&k| lines[k].area / area * f(&lines[k]))
+                .sum::<f64>()
+        };
+        let centre = mean(&|l| l.position);
+        // Squares of widths add; 8·ln 2 turns a variance into the square of a width.
+        let eight_ln_2 = 8.0 * std::f64::consts::LN_2;
+        let square = mean(&|l| l.width.powi(2) + eight_ln_2 * (l.position - centre).powi(2));
+        Extent {
+            centre,
+            width: square.sqrt(),
+            area,
+        }
+    }
 }
 
 #[cfg(test)]
@@ -302,6 +410,39 @@ mod tests {
             .collect();
         assert_eq!(found[0].groups.len(), 2, "{:?}", found[0].groups);
         assert_eq!(first, [12.0, 12.53]);
+    }
+
+    #[test]
+    fn a_third_mode_and_its_combinations_join() {
+        // Spacings 0.150, 0.197 and 0.319 eV on a strong origin, with combinations.
+        let lines = [
+            line(10.873, 92000.0, 0.024),
+            line(11.023, 8400.0, 0.0245),
+            line(11.070, 11000.0, 0.0245),
+            line(11.192, 5200.0, 0.027),
+            line(11.221, 900.0, 0.024),
+            line(11.267, 700.0, 0.024),
+            line(11.342, 400.0, 0.027),
+            line(11.389, 600.0, 0.027),
+        ];
+        let (partition, p) = best(&lines);
+        assert_eq!(partition, [vec![0, 1, 2, 3, 4, 5, 6, 7]]);
+        assert!(p > 0.7, "{p}");
+    }
+
+    #[test]
+    fn an_unresolved_floor_belongs_to_its_progression() {
+        let mut lines = Vec::new();
+        let mut area = 2000.0;
+        for v in 0..8 {
+            lines.push(line(12.8 + 0.11 * v as f64, area, 0.04));
+            area *= 3.5 / (v + 1) as f64;
+        }
+        lines.push(line(13.45, 15000.0, 0.5));
+        lines.sort_by(|a, b| a.position.total_cmp(&b.position));
+        let (partition, p) = best(&lines);
+        assert_eq!(partition.len(), 1, "{partition:?}");
+        assert!((0.5..0.99).contains(&p), "{p}");
     }
 
     #[test]

@@ -1,4 +1,4 @@
-//! A vibrational progression in one or two modes, grown member by member.
+//! A vibrational progression in up to three modes, grown member by member.
 
 use super::grouping::LineView;
 use crate::numeric::statistics::{ln_normal, log_sum_exp};
@@ -7,11 +7,10 @@ use crate::numeric::statistics::{ln_normal, log_sum_exp};
 const SPACINGS: [f64; 2] = [0.03, 0.55];
 
 /// Modes that one band may show.
-const MODES: usize = 2;
+const MODES: usize = 3;
 
 /// Probability that a band shows members at all, and that it shows them in one more mode.
-const FIRST_MODE: f64 = 0.5;
-const SECOND_MODE: f64 = 0.15;
+const ONE_MORE_MODE: [f64; MODES] = [0.5, 0.25, 0.15];
 
 /// Relative scatter of a spacing from one member to the next (anharmonicity included).
 const SPACING_SCATTER: f64 = 0.03;
@@ -19,8 +18,10 @@ const SPACING_SCATTER: f64 = 0.03;
 /// Scatter of ln(intensity ratio) about Poisson's law.
 const RATIO_SCATTER: f64 = 0.6;
 
-/// Least distance of members over their mean width, below which they are not resolved.
-const RESOLVED: f64 = 0.6;
+/// Least distance of members over their mean width, below which they are not resolved, and the
+/// uncertainty of a position, over a spacing, above which nothing is known about regularity.
+const RESOLVED: f64 = 0.7;
+const KNOWN: f64 = 0.25;
 
 /// One vibrational member: a line, or several that make up its shape.
 #[derive(Debug, Clone, PartialEq)]
@@ -164,10 +165,11 @@ impl Progression {
     /// density of the line in that role.
     pub fn extended_by(&self, k: usize, line: &LineView) -> Vec<(Progression, f64)> {
         let mut ways = Vec::new();
-        let last = &self.members[self.members.len() - 1];
-        let resolved = (line.position - last.view.position).abs()
-            > RESOLVED * 0.5 * (line.width + last.view.width)
-            || self.members.len() > 1;
+        let resolved = self.members.iter().all(|m| {
+            let apart = (line.position - m.view.position).abs();
+            apart > RESOLVED * 0.5 * (line.width + m.view.width)
+                && line.position_sd.max(m.view.position_sd) < KNOWN * apart
+        });
         if !resolved {
             return ways;
         }
@@ -192,17 +194,11 @@ impl Progression {
         if self.modes < MODES {
             let origin = &self.members[0];
             let spacing = line.position - origin.view.position;
-            if (SPACINGS[0]..=SPACINGS[1]).contains(&spacing)
-                && spacing > RESOLVED * 0.5 * (line.width + origin.view.width)
-            {
-                let begins = if self.modes == 0 {
-                    FIRST_MODE
-                } else {
-                    SECOND_MODE
-                };
+            if (SPACINGS[0]..=SPACINGS[1]).contains(&spacing) {
+                let begins = ONE_MORE_MODE[self.modes];
                 let position = -(spacing * (SPACINGS[1] / SPACINGS[0]).ln()).ln();
                 let ratio = (line.area / origin.area).ln();
-                // A first mode may have its maximum further up; a second one seldom.
+                // A first mode may have its maximum further up; another one seldom.
                 let area = if self.modes == 0 {
                     ln_normal(ratio, -0.4, 1.1)
                 } else {
