@@ -1,10 +1,10 @@
 //! The invented studies of `spectra-demo`: that the files are what the generator makes, and that
 //! what was planted can be seen at all.
 
-#[path = "demo/outcome.rs"]
-mod outcome;
 #[path = "../../spectra-demo/model.rs"]
 mod model;
+#[path = "demo/outcome.rs"]
+mod outcome;
 
 use model::Scenario;
 use std::path::{Path, PathBuf};

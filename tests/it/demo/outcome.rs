@@ -5,9 +5,9 @@ use super::model::{self, Scenario};
 use bandproof::assign::{Assignment, Conditions, Remark, RemarkKind, assign};
 use bandproof::fit::{BandFit, FitOptions, fit_bands};
 use bandproof::levels::Levels;
+use bandproof::study::compute;
 use bandproof::study::request::StudyRequest;
 use bandproof::study::settings::Settings;
-use bandproof::study::compute;
 use std::fmt::Write as _;
 
 /// A planted band may be found this far from its first moment, eV: unresolved neighbours and the
@@ -69,19 +69,33 @@ fn complaints(scenario: &Scenario, run: &Run) -> String {
             let _ = write!(wrong, "no band for {} at {energy:.2}; ", planted.orbital);
             continue;
         };
-        let found = run.assignment.matches.iter().find(|m| m.band == band.id).unwrap();
+        let found = run
+            .assignment
+            .matches
+            .iter()
+            .find(|m| m.band == band.id)
+            .unwrap();
         let orbital = planted.orbital.to_owned();
         let named = found.hole_states == [orbital.clone()]
-            || found.alternatives.iter().any(|other| {
-                other.probability >= NAMED && other.hole_states.contains(&orbital)
-            });
+            || found
+                .alternatives
+                .iter()
+                .any(|other| other.probability >= NAMED && other.hole_states.contains(&orbital));
         if !named {
-            let _ = write!(wrong, "{orbital} at {energy:.2} is called {:?}; ", found.hole_states);
+            let _ = write!(
+                wrong,
+                "{orbital} at {energy:.2} is called {:?}; ",
+                found.hole_states
+            );
         }
     }
     for remark in &run.assignment.remarks {
         if !planted(scenario, remark) {
-            let _ = write!(wrong, "flagged {:?} at {:.2}; ", remark.kind, remark.position_ev);
+            let _ = write!(
+                wrong,
+                "flagged {:?} at {:.2}; ",
+                remark.kind, remark.position_ev
+            );
         }
     }
     let line = main_line(scenario);
@@ -91,7 +105,11 @@ fn complaints(scenario: &Scenario, run: &Run) -> String {
             && remark.candidates[0].cause.contains(line.cause)
     };
     if !run.assignment.remarks.iter().any(named) {
-        let _ = write!(wrong, "{} at {:.2} is not named; ", line.cause, line.energy_ev);
+        let _ = write!(
+            wrong,
+            "{} at {:.2} is not named; ",
+            line.cause, line.energy_ev
+        );
     }
     wrong
 }
@@ -122,15 +140,18 @@ fn main_line(scenario: &Scenario) -> PlantedLine {
 /// Whether a remark is about something that was planted: open order between neighbours, a line of
 /// a planted gas, or the ghost of a planted band.
 fn planted(scenario: &Scenario, remark: &Remark) -> bool {
-    let near = |energy: f64| {
-        (remark.position_ev - scenario.offset_ev - energy).abs() < LINE_TOLERANCE_EV
-    };
+    let near =
+        |energy: f64| (remark.position_ev - scenario.offset_ev - energy).abs() < LINE_TOLERANCE_EV;
     match remark.kind {
         RemarkKind::OpenOrder => true,
         RemarkKind::ForeignGas => (scenario.gases.iter())
             .filter(|gas| remark.candidates[0].cause.contains(gas.name))
             .flat_map(|gas| &gas.bands)
-            .any(|band| band.members.iter().any(|m| near(band.origin_ev + m.offset_ev))),
+            .any(|band| {
+                band.members
+                    .iter()
+                    .any(|m| near(band.origin_ev + m.offset_ev))
+            }),
         RemarkKind::LampSatellite => scenario.lamp.iter().any(|lamp| {
             scenario.bands.iter().any(|band| {
                 let member = |m: &model::Line| near(band.origin_ev + m.offset_ev - lamp.excess_ev);
