@@ -308,12 +308,17 @@ fn read_block(cursor: &mut Cursor, head: &Head, first: Option<&Items>) -> Parsed
         if given(item) {
             let expected = "a number of the date (year, month, day, hours, minutes, seconds, zone)";
             let value = cursor.number(expected)?;
-            if item <= 6 && value >= 0.0 {
+            if item <= 6 && value > 0.0 {
                 moment.push(format!("{what} {value}"));
             }
         }
     }
-    keep(&mut comments, "measured", &moment.join(", "));
+    if moment
+        .first()
+        .is_some_and(|first| first.starts_with("year"))
+    {
+        keep(&mut comments, "measured", &moment.join(", "));
+    }
     if given(8) {
         items.comments.clear();
         for _ in 0..cursor.count("the number of lines in the block comment")? {
@@ -509,10 +514,6 @@ fn read_ordinates(cursor: &mut Cursor, head: &Head, items: &Items) -> Parsed<Rec
             expected,
         });
     }
-    cursor.skip(
-        2 * width,
-        "the least and the greatest ordinate of each variable",
-    )?;
     if found % width != 0 {
         return Err(VamasProblem::Uneven {
             found,
@@ -522,6 +523,10 @@ fn read_ordinates(cursor: &mut Cursor, head: &Head, items: &Items) -> Parsed<Rec
     if !head.regular && width == 1 {
         return Err(VamasProblem::NoOrdinates);
     }
+    cursor.skip(
+        2 * width,
+        "the least and the greatest ordinate of each variable",
+    )?;
     let (name, unit) = match head.regular {
         true => (&items.abscissa.0, &items.abscissa.1),
         false => (&items.variables[0].0, &items.variables[0].1),
