@@ -116,10 +116,10 @@ fn check(options: &FitOptions) -> Result<(), FitError> {
             wanted,
         })
     };
-    if let Some(r) = options.resolution_ev {
-        if !(r > 0.0 && r.is_finite()) {
-            return refuse("resolution_ev", r, "positive");
-        }
+    if let Some(r) = options.resolution_ev
+        && !(r > 0.0 && r.is_finite())
+    {
+        return refuse("resolution_ev", r, "positive");
     }
     if !(options.false_alarm > 0.0 && options.false_alarm < 1.0) {
         return refuse("false_alarm", options.false_alarm, "between 0 and 1");

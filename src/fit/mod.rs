@@ -268,6 +268,7 @@ pub struct Band {
     pub members: Vec<Member>,
     /// All lines that make up the band, as indices into [`BandFit::peaks`], by rising energy:
     /// more than the members where a member's shape takes several lines.
+    #[serde(default)]
     pub peaks: Vec<usize>,
 }
 

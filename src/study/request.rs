@@ -191,7 +191,7 @@ impl From<Positive> for f64 {
 
 /// A range of ionization energies, eV, low before high.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize)]
-#[serde(try_from = "[f64; 2]", into = "[f64; 2]")]
+#[serde(try_from = "Vec<f64>", into = "[f64; 2]")]
 pub struct Window([f64; 2]);
 
 impl Window {
@@ -201,17 +201,17 @@ impl Window {
     }
 }
 
-impl TryFrom<[f64; 2]> for Window {
+impl TryFrom<Vec<f64>> for Window {
     type Error = String;
 
-    fn try_from(ends: [f64; 2]) -> Result<Self, String> {
-        if ends.iter().all(|e| e.is_finite()) && ends[0] < ends[1] {
-            Ok(Self(ends))
-        } else {
-            Err(format!(
-                "found [{}, {}], expected two finite energies, the lower one first",
-                ends[0], ends[1]
-            ))
+    fn try_from(found: Vec<f64>) -> Result<Self, String> {
+        match found[..] {
+            [low, high] if low.is_finite() && high.is_finite() && low < high => {
+                Ok(Self([low, high]))
+            }
+            _ => Err(format!(
+                "found {found:?}, expected two finite energies, the lower one first"
+            )),
         }
     }
 }

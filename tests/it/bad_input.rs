@@ -181,7 +181,7 @@ fn malformed_studies_are_refused_with_line_and_column() {
         (
             "window turned",
             format!("{head}{trace}window_ev = [14, 12]\n"),
-            "s.toml:5:13: found [14, 12]",
+            "s.toml:5:13: found [14.0, 12.0]",
         ),
         (
             "window of three",
@@ -268,12 +268,12 @@ fn malformed_studies_are_refused_with_line_and_column() {
         (
             "override turned",
             &["assign", "s.toml", "--set", "trace.window_ev=[9,8]"],
-            "[9, 8]",
+            "[9.0, 8.0]",
         ),
         (
             "flag turned",
             &["assign", "s.toml", "--window", "15", "12"],
-            "[15, 12]",
+            "[15.0, 12.0]",
         ),
         (
             "begin again",

@@ -43,8 +43,10 @@ fn sources() -> Vec<(String, PathBuf, String)> {
     let mut paths = Vec::new();
     walk(&src, &mut paths);
     paths.sort();
+    let test_only = test_only(&paths);
     paths
         .into_iter()
+        .filter(|path| !test_only.contains(path))
         .map(|path| {
             let first = path.strip_prefix(&src).unwrap().iter().next().unwrap();
             let module = first.to_str().unwrap().trim_end_matches(".rs").to_owned();
@@ -53,6 +55,22 @@ fn sources() -> Vec<(String, PathBuf, String)> {
         })
         .filter(|(module, ..)| module != "lib" && module != "main")
         .collect()
+}
+
+/// Files that a `#[cfg(test)] mod name;` beside them declares.
+fn test_only(paths: &[PathBuf]) -> Vec<PathBuf> {
+    let mut found = Vec::new();
+    for path in paths {
+        let text = fs::read_to_string(path).unwrap();
+        for piece in text.split("#[cfg(test)]\nmod ").skip(1) {
+            if let Some((name, _)) = piece.split_once(';')
+                && name.chars().all(|c| c.is_alphanumeric() || c == '_')
+            {
+                found.push(path.with_file_name(format!("{name}.rs")));
+            }
+        }
+    }
+    found
 }
 
 /// The text without comments and without the unit tests at a file's end.
