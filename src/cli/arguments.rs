@@ -68,20 +68,23 @@ pub struct ComputeArguments {
 /// How to read a trace.
 #[derive(Debug, Args)]
 pub struct ReadArguments {
+    /// Which trace of the file, by name or by number from 1, where it holds several
+    #[arg(long, value_name = "TRACE", value_parser = choice)]
+    pub choice: Option<Choice>,
     /// What the axis holds [default: what the file says, else ionization energy]
-    #[arg(long, value_name = "ionization|kinetic|flight-time")]
+    #[arg(long, value_name = "ionization|kinetic|wavenumber|flight-time")]
     pub axis: Option<AxisName>,
     /// Photon energy, eV (He I α is 21.218)
     #[arg(long, value_name = "EV")]
     pub photon_energy: Option<f64>,
     /// Column of the axis, by name or by number from 1
-    #[arg(long, value_name = "COLUMN", value_parser = column)]
+    #[arg(long, value_name = "COLUMN", value_parser = choice)]
     pub energy_column: Option<Choice>,
     /// Column of the counts, by name or by number from 1
-    #[arg(long, value_name = "COLUMN", value_parser = column)]
+    #[arg(long, value_name = "COLUMN", value_parser = choice)]
     pub counts_column: Option<Choice>,
     /// Column of the standard deviations, by name or by number from 1
-    #[arg(long, value_name = "COLUMN", value_parser = column)]
+    #[arg(long, value_name = "COLUMN", value_parser = choice)]
     pub sd_column: Option<Choice>,
     /// Ionization energies to use, eV
     #[arg(long, num_args = 2, value_names = ["LOW", "HIGH"])]
@@ -233,9 +236,9 @@ pub struct BeginArguments {
     pub overwrite: bool,
 }
 
-fn column(text: &str) -> Result<Choice, String> {
+fn choice(text: &str) -> Result<Choice, String> {
     match text.parse().expect("any text is a name") {
-        Choice::Number(0) => Err("columns count from 1".to_owned()),
+        Choice::Number(0) => Err("found 0, expected a name or a number from 1".to_owned()),
         choice => Ok(choice),
     }
 }

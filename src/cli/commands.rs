@@ -73,7 +73,7 @@ pub(super) fn simulate(a: SimulateArguments) -> Result<(), StudyError> {
     };
     let progress = Progress::new();
     let simulated = simulating::run(&settings, &mut |e| progress.show(e))?;
-    let written = report::write_simulation(&simulated, &folder)?;
+    let written = simulated.write(&folder)?;
     drop(progress);
     print(&report::levels_table(&simulated.levels));
     print("\nWrote\n");
@@ -96,7 +96,7 @@ pub(super) fn bands(a: BandsArguments) -> Result<(), StudyError> {
         print(&report::bands_table(&measured.fit));
     }
     if let Some(folder) = a.into {
-        let written = report::write_bands(&measured.sheet(), &folder)?;
+        let written = measured.write(&folder)?;
         print("\nWrote\n");
         for path in written {
             print(&format!("  {}\n", path.display()));
@@ -193,6 +193,7 @@ fn read_overrides(read: &ReadArguments) -> Vec<String> {
     let window = (read.window.as_ref())
         .map(|w| toml::Value::from(w.clone()).to_string());
     [
+        key("choice", choice(&read.choice)),
         key("axis", axis),
         key("photon_energy_ev", number(read.photon_energy)),
         key("energy_column", choice(&read.energy_column)),

@@ -13,7 +13,7 @@ use super::CharacterError;
 use crate::basis::Basis;
 use crate::integrals;
 use crate::molecule::Molecule;
-use crate::numeric::linalg::{product, symmetric_eigen, symmetrise, view};
+use crate::numeric::linalg::{congruence, product, symmetric_eigen, symmetrise, view};
 use crate::scf::SpinOrbitals;
 use nalgebra::{DMatrix, DVector};
 
@@ -57,8 +57,15 @@ impl IntrinsicOrbitals {
 
         // Free-atom orbitals in the large basis, and the occupied orbitals with everything but
         // their free-atom part taken away ("depolarised"), orthonormalised.
-        let projected = solve(overlap, &cross)?;
-        let back = solve(&small, &(cross.transpose() * &c))?;
+        // S⁻¹ is written C Cᵀ with all orbitals, which also holds where the calculation dropped
+        // linearly dependent functions.
+        let all = &orbitals.coefficients;
+        let projected = product(
+            view(all),
+            view(&product(view(all).transpose(), view(&cross))),
+        );
+        let factor = small.cholesky().ok_or(CharacterError::CoincidentAtoms)?;
+        let back = factor.solve(&(cross.transpose() * &c));
         let depolarised = &projected * back;
         let metric = congruence(&depolarised, overlap);
         let depolarised = depolarised * power(&metric, -0.5)?;
@@ -80,11 +87,11 @@ impl IntrinsicOrbitals {
             view(&a).transpose(),
             view(&(overlap * &orbitals.coefficients)),
         );
-        let all = &inverse_root * moments;
-        let orthonormal = all.columns(0, occupied).into_owned();
+        let expanded = &inverse_root * moments;
+        let orthonormal = expanded.columns(0, occupied).into_owned();
         let coefficients = &inverse_root * &orthonormal;
-        let scaled = &all * DMatrix::from_diagonal(&orbitals.energies);
-        let mut fock = product(view(&scaled), view(&all).transpose());
+        let scaled = &expanded * DMatrix::from_diagonal(&orbitals.energies);
+        let mut fock = product(view(&scaled), view(&expanded).transpose());
         symmetrise(&mut fock);
         Ok(IntrinsicOrbitals {
             minimal,
@@ -162,18 +169,6 @@ fn cross_and_small_overlap(large: &Basis, small: &Basis) -> (DMatrix<f64>, DMatr
         overlap.view((0, n), (n, k)).into_owned(),
         overlap.view((n, n), (k, k)).into_owned(),
     )
-}
-
-fn congruence(x: &DMatrix<f64>, a: &DMatrix<f64>) -> DMatrix<f64> {
-    crate::numeric::linalg::congruence(x, a)
-}
-
-fn solve(matrix: &DMatrix<f64>, right: &DMatrix<f64>) -> Result<DMatrix<f64>, CharacterError> {
-    let factor = matrix
-        .clone()
-        .cholesky()
-        .ok_or(CharacterError::DependentBasis)?;
-    Ok(factor.solve(right))
 }
 
 /// A symmetric positive definite matrix to a power.

@@ -10,6 +10,7 @@ pub mod bond_order;
 pub mod evidence;
 pub mod frame;
 pub mod intrinsic;
+pub mod irreps;
 pub mod verdict;
 pub mod words;
 
@@ -53,11 +54,9 @@ pub enum CharacterError {
         /// Smallest eigenvalue of the projected overlap.
         smallest: f64,
     },
-    /// The overlap of the basis cannot be factored.
-    #[error(
-        "the basis functions are linearly dependent, so populations cannot be computed; choose a smaller basis"
-    )]
-    DependentBasis,
+    /// The free-atom orbitals themselves are linearly dependent.
+    #[error("two atoms are so close that their orbitals cannot be told apart")]
+    CoincidentAtoms,
     /// Eigenvalues could not be found.
     #[error(transparent)]
     Linalg(#[from] LinalgError),
@@ -152,5 +151,173 @@ fn character(
         net_overlap_population: evidence.net_overlap_population,
         atoms,
         bonds,
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::integrals::{kinetic, nuclear_attraction, overlap};
+    use crate::levels::Verdict;
+    use crate::numeric::linalg::{congruence, symmetric_eigen};
+    use nalgebra::{DVector, Rotation3, Vector3};
+
+    /// Orbitals without electron repulsion: exact for one electron, and a stand-in with the right
+    /// symmetry and orthonormality otherwise.
+    fn bare_orbitals(
+        molecule: &Molecule,
+        name: &str,
+    ) -> (Basis, DMatrix<f64>, SpinOrbitals, DMatrix<f64>) {
+        let basis = Basis::bundled(molecule, name).unwrap();
+        let s = overlap(&basis);
+        let charges: Vec<_> = molecule
+            .atoms
+            .iter()
+            .map(|a| (f64::from(a.number), a.position_bohr))
+            .collect();
+        let h = kinetic(&basis) + nuclear_attraction(&basis, &charges);
+        let (values, vectors) = symmetric_eigen(&s).unwrap();
+        let x = &vectors * DMatrix::from_diagonal(&values.map(|v| v.powf(-0.5)));
+        let (energies, rotated) = symmetric_eigen(&congruence(&x, &h)).unwrap();
+        let electrons = if molecule.is_closed_shell() { 2.0 } else { 1.0 };
+        let occupied = molecule.spin_electrons().0;
+        let occupations =
+            DVector::from_fn(
+                energies.len(),
+                |i, _| if i < occupied { electrons } else { 0.0 },
+            );
+        let coefficients = x * rotated;
+        (
+            basis,
+            s,
+            SpinOrbitals {
+                coefficients,
+                energies,
+                occupations,
+            },
+            h,
+        )
+    }
+
+    fn read(xyz: &str, charge: i32) -> Molecule {
+        let text = format!("{}\n\n{xyz}", xyz.lines().count());
+        Molecule::from_xyz(&text, "test", charge, None).unwrap()
+    }
+
+    const WATER: &str = "O 0 0 0\nH 0 0.7569 -0.5859\nH 0 -0.7569 -0.5859";
+
+    #[test]
+    fn intrinsic_orbitals_hold_the_occupied_space_exactly() {
+        let water = read(WATER, 0);
+        for name in ["6-31g*", "def2-svp", "cc-pvtz"] {
+            let (basis, s, orbitals, h) = bare_orbitals(&water, name);
+            let intrinsic = IntrinsicOrbitals::new(&water, &basis, &s, &orbitals).unwrap();
+            let identity = DMatrix::identity(5, 5);
+            let (c, o) = (&intrinsic.coefficients, &intrinsic.orthonormal);
+            assert!((o.transpose() * o - &identity).amax() < 1e-10, "{name}");
+            let norm = c.transpose() * &intrinsic.overlap * c;
+            assert!((norm - &identity).amax() < 1e-10, "{name}");
+            // The Fock matrix (here: the bare Hamiltonian) has its own energies in that space.
+            let energies = o.transpose() * &intrinsic.fock * o;
+            let occupied = orbitals.coefficients.columns(0, 5);
+            let expected = occupied.transpose() * h * occupied;
+            assert!((energies - expected).amax() < 1e-9, "{name}");
+            for i in 0..5 {
+                assert!((intrinsic.atom_shares(i).sum() - 1.0).abs() < 1e-10);
+            }
+        }
+    }
+
+    #[test]
+    fn one_electron_bonds_in_the_hydrogen_molecule_ion() {
+        let ion = read("H 0 0 0\nH 0 0 1.057", 1);
+        let (basis, s, orbitals, _) = bare_orbitals(&ion, "cc-pvtz");
+        // E = −1.1026 hartree at 2 bohr with 1/R, so ε = −1.1026 (D. R. Bates et al., Phil.
+        // Trans. R. Soc. A 246, 215, 1953; memory).
+        assert!(
+            (orbitals.energies[0] + 1.1026).abs() < 2e-3,
+            "{}",
+            orbitals.energies[0]
+        );
+        let list = characters(&ion, &basis, &s, &orbitals).unwrap();
+        let bond = list[0].as_ref().unwrap();
+        assert_eq!(bond.verdict, Verdict::Bonding);
+        assert_eq!(bond.description, "σ bonding: H–H; HOMO");
+        assert!(list[1..].iter().all(Option::is_none));
+        // By symmetry half on each atom; one bond: net = 4·½·S/(1+S) with S of the two orbitals.
+        assert!((bond.atoms[0].share - 0.5).abs() < 1e-10);
+        let intrinsic = IntrinsicOrbitals::new(&ion, &basis, &s, &orbitals).unwrap();
+        let small = intrinsic.overlap[(0, 1)];
+        assert!((bond.net_overlap_population - 2.0 * small / (1.0 + small)).abs() < 1e-10);
+    }
+
+    #[test]
+    fn evidence_feels_neither_motion_nor_rotation_inside_a_degenerate_set() {
+        let methane = "C 0 0 0\nH 0.6276 0.6276 0.6276\nH -0.6276 -0.6276 0.6276\n\
+                       H -0.6276 0.6276 -0.6276\nH 0.6276 -0.6276 -0.6276";
+        let methane = read(methane, 0);
+        let (basis, s, orbitals, _) = bare_orbitals(&methane, "def2-svp");
+        let plain = evidence(&methane, &basis, &s, &orbitals).unwrap();
+        let sizes: Vec<usize> = plain.iter().map(|e| e.orbitals.len()).collect();
+        assert_eq!(sizes, [1, 3]);
+
+        let turn = Rotation3::from_euler_angles(0.7, -0.4, 1.9);
+        let moved = methane.moved(&turn, Vector3::new(1.0, -2.0, 0.5));
+        let (basis_2, s_2, orbitals_2, _) = bare_orbitals(&moved, "def2-svp");
+        let turned = evidence(&moved, &basis_2, &s_2, &orbitals_2).unwrap();
+
+        let mut mixed = orbitals.clone();
+        let set = plain[1].orbitals.clone();
+        let members = orbitals.coefficients.columns(set.start, 3) * turn.matrix();
+        mixed
+            .coefficients
+            .columns_mut(set.start, 3)
+            .copy_from(&members);
+        let mixed = evidence(&methane, &basis, &s, &mixed).unwrap();
+
+        for other in [turned, mixed] {
+            for (a, b) in plain.iter().zip(&other) {
+                assert!((a.net_overlap_population - b.net_overlap_population).abs() < 1e-8);
+                assert!((a.s_share - b.s_share).abs() < 1e-8);
+                for (x, y) in a.atom_shares.iter().zip(&b.atom_shares) {
+                    assert!((x - y).abs() < 1e-8);
+                }
+                for (x, y) in a.bonds.iter().zip(&b.bonds) {
+                    assert!((x.overlap_population - y.overlap_population).abs() < 1e-8);
+                    assert!((x.pi_part - y.pi_part).abs() < 1e-8);
+                    assert!((x.interaction_ev - y.interaction_ev).abs() < 1e-6);
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn too_many_electrons_for_the_atoms_are_refused() {
+        let helium = read("He 0 0 0", -2);
+        let (basis, s, orbitals, _) = bare_orbitals(&helium, "def2-svp");
+        let error = characters(&helium, &basis, &s, &orbitals).unwrap_err();
+        assert_eq!(
+            error,
+            CharacterError::TooManyOccupied {
+                occupied: 2,
+                atomic: 1
+            }
+        );
+    }
+
+    #[test]
+    fn reflection_splits_water_into_one_pi_and_sigma_orbitals() {
+        let water = read(WATER, 0);
+        let (basis, s, orbitals, _) = bare_orbitals(&water, "def2-svp");
+        let pi: Vec<f64> = evidence(&water, &basis, &s, &orbitals)
+            .unwrap()
+            .iter()
+            .map(|e| e.pi_share.unwrap())
+            .collect();
+        assert!(
+            pi.iter().all(|x| x.abs() < 1e-8 || (x - 1.0).abs() < 1e-8),
+            "{pi:?}"
+        );
+        assert!((pi.iter().sum::<f64>() - 1.0).abs() < 1e-8, "{pi:?}");
     }
 }

@@ -4,7 +4,7 @@ use super::evidence::Evidence;
 use crate::levels::Verdict;
 
 /// From this net overlap population on (electrons per pair) an orbital may count as bonding.
-pub const BONDING_POPULATION: f64 = 0.03;
+pub const BONDING_POPULATION: f64 = 0.035;
 /// … if mixing across the bonds lowers its energy by at least this, eV.
 pub const BONDING_INTERACTION_EV: f64 = -1.0;
 /// An orbital whose non-neighbours repel counts as bonding all the same from this overlap

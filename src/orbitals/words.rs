@@ -2,6 +2,7 @@
 
 use super::evidence::{BondEvidence, Evidence};
 use super::frame::Frame;
+use super::verdict::LONE_PAIR_SHARE;
 use crate::levels::Verdict;
 use crate::molecule::Molecule;
 
@@ -9,6 +10,8 @@ use crate::molecule::Molecule;
 const PURE_SHARE: f64 = 0.9;
 /// A bond is named from this share of the largest overlap population on.
 const NAMED_BOND: f64 = 0.25;
+/// What an orbital with another verdict does against a bond is named from this share on.
+const NAMED_AGAINST: f64 = 0.4;
 /// Least overlap population of a bond that is named at all, electrons.
 const LEAST_POPULATION: f64 = 0.02;
 /// An atom of a nonbonding orbital is named from this share on.
@@ -29,24 +32,24 @@ pub fn describe(
     let mut text = match verdict {
         Verdict::Bonding => bonding(molecule, evidence, kind),
         Verdict::Antibonding => {
-            let names = bond_names(molecule, evidence, -1.0);
+            let names = bond_names(molecule, evidence, -1.0, NAMED_BOND);
             kind.before(&format!("antibonding: {}", or_all_atoms(names)))
         }
         Verdict::LonePair => {
             let atom = largest(evidence);
-            format!("{} lone pair{}", short_name(molecule, atom), kind.after())
+            // Without a plane or axis the words describe bonds, which a lone pair has none of.
+            let after = if *frame == Frame::Solid {
+                ""
+            } else {
+                kind.after()
+            };
+            format!("{} lone pair{after}", short_name(molecule, atom))
         }
         Verdict::Nonbonding => nonbonding(molecule, evidence, kind),
         Verdict::Mixed => {
-            let (holds, drives) = (
-                bond_names(molecule, evidence, 1.0),
-                bond_names(molecule, evidence, -1.0),
-            );
-            kind.before(&format!(
-                "mixed, bonding: {}; antibonding: {}",
-                or_all_atoms(holds),
-                or_all_atoms(drives)
-            ))
+            let [holds, drives] = [1.0, -1.0]
+                .map(|sign| or_all_atoms(bond_names(molecule, evidence, sign, NAMED_BOND)));
+            kind.before(&format!("mixed, bonding: {holds}; antibonding: {drives}"))
         }
     };
     match evidence.orbitals.len() {
@@ -127,18 +130,20 @@ impl Kind {
 
 fn bonding(molecule: &Molecule, evidence: &Evidence, kind: Kind) -> String {
     let weak = evidence.net_overlap_population < 0.1 && evidence.bonded_overlap_population() < 0.1;
-    let names = or_all_atoms(bond_names(molecule, evidence, 1.0));
+    let atom = largest(evidence);
+    if weak && evidence.atom_shares[atom] >= LONE_PAIR_SHARE {
+        return format!(
+            "mostly {}{}, weakly bonding",
+            short_name(molecule, atom),
+            kind.after()
+        );
+    }
+    let names = or_all_atoms(bond_names(molecule, evidence, 1.0, NAMED_BOND));
     let mut text = kind.before(&format!(
         "{}bonding: {names}",
         if weak { "weakly " } else { "" }
     ));
-    if weak {
-        let atom = largest(evidence);
-        if evidence.atom_shares[atom] >= super::verdict::LONE_PAIR_SHARE {
-            text += &format!("; mostly on {}", short_name(molecule, atom));
-        }
-    }
-    let against = bond_names(molecule, evidence, -1.0);
+    let against = bond_names(molecule, evidence, -1.0, NAMED_AGAINST);
     if !against.is_empty() {
         text += &format!("; antibonding: {}", against.join(", "));
     }
@@ -186,13 +191,18 @@ fn largest(evidence: &Evidence) -> usize {
 
 /// The bonds that hold (`sign` +1) or drive apart (−1), strongest first: element pairs such as
 /// `C–H`, or single bonds where an element pair occurs with both signs.
-fn bond_names(molecule: &Molecule, evidence: &Evidence, sign: f64) -> Vec<String> {
+fn bond_names(
+    molecule: &Molecule,
+    evidence: &Evidence,
+    sign: f64,
+    least_share: f64,
+) -> Vec<String> {
     let largest = evidence
         .bonds
         .iter()
         .map(|b| b.overlap_population.abs())
         .fold(0.0, f64::max);
-    let threshold = (NAMED_BOND * largest).max(LEAST_POPULATION);
+    let threshold = (least_share * largest).max(LEAST_POPULATION);
     let named = |sign: f64| {
         let mut bonds: Vec<&BondEvidence> = evidence
             .bonds

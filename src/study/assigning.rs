@@ -4,8 +4,9 @@ use super::settings::{Settings, TraceSettings};
 use super::{Event, Observer, StudyError, compute, dossier};
 use crate::assign::{self, Conditions};
 use crate::fit::{self, BandFit, FitOptions};
-use crate::report::Dossier;
+use crate::report::{self, Dossier, Heading};
 use crate::trace::Trace;
+use std::path::{Path, PathBuf};
 
 /// A trace with its fit.
 #[derive(Debug, Clone, PartialEq)]
@@ -14,6 +15,23 @@ pub struct Measured {
     pub trace: Trace,
     /// Its bands.
     pub fit: BandFit,
+}
+
+impl Measured {
+    /// Writes bands and figure into a folder; returns the files.
+    ///
+    /// # Errors
+    /// An output that cannot be made or written.
+    pub fn write(&self, folder: &Path) -> Result<Vec<PathBuf>, StudyError> {
+        let first = &self.fit.groupings[0];
+        let photon = (self.trace.photon_energy_ev).map(|e| format!("hν = {e:.2} eV"));
+        let heading = Heading {
+            title: self.trace.source.clone(),
+            details: photon.unwrap_or_default(),
+        };
+        let overlay = dossier::measured_overlay(self, first);
+        Ok(report::write_bands(&heading, &overlay, &self.fit, folder)?)
+    }
 }
 
 /// Reads a trace and fits its bands.

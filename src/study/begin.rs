@@ -5,6 +5,9 @@ use crate::molecule::Molecule;
 use crate::trace::{Axis, Trace};
 use std::path::{Component, Path, PathBuf};
 
+/// Words for the kinds of axis.
+const AXES: &str = "ionization, kinetic, wavenumber, flight-time";
+
 /// The text of a study file. `geometry` and `file` are written as given.
 pub fn study_text(geometry: &Path, molecule: &Molecule, file: &Path, trace: &Trace) -> String {
     let quoted = |path: &Path| toml::Value::from(path.to_string_lossy().into_owned()).to_string();
@@ -14,8 +17,9 @@ pub fn study_text(geometry: &Path, molecule: &Molecule, file: &Path, trace: &Tra
         None => "# photon_energy_ev = 21.218         # He I α; needed to look for lamp satellites".to_owned(),
     };
     let axis = match trace.axis {
-        Axis::Ionization => "axis = \"ionization\"               # or \"kinetic\", \"flight-time\"".to_owned(),
-        Axis::Kinetic => "axis = \"kinetic\"".to_owned(),
+        Axis::Ionization | Axis::Kinetic | Axis::Wavenumber => {
+            format!("axis = {:?}                 # the others: {AXES}", trace.axis.name())
+        }
         Axis::FlightTime {
             length_m,
             time_zero_ns,

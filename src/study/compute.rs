@@ -6,9 +6,13 @@ use crate::basis::{Basis, BasisSet};
 use crate::levels::{
     AtomLine, Level, Levels, Method, MoleculeSummary, SCHEMA, ScfSummary,
 };
+use crate::ionization::{self, Portrait};
 use crate::molecule::Molecule;
-use crate::scf::{self, ScfOptions};
-use crate::{integrals, ionization, orbitals};
+use crate::molecule::symmetry::{self, PointGroup};
+use crate::orbitals::irreps;
+use crate::scf::{self, ScfOptions, SpinOrbitals};
+use crate::{integrals, orbitals};
+use nalgebra::DMatrix;
 
 /// Name and version of the program, as it stands in the outputs.
 pub const PROGRAM: &str = concat!(env!("CARGO_PKG_NAME"), " ", env!("CARGO_PKG_VERSION"));
@@ -47,20 +51,21 @@ pub fn levels_of(
             observer(&Event::Scf {
                 iteration: step.iteration,
                 energy_hartree: step.energy_hartree,
-                gradient: step.gradient,
+                gradient_hartree: step.gradient_hartree,
             })
         },
     )?;
     observer(&Event::Stage("character of the orbitals"));
     let overlap = integrals::overlap(&basis);
-    let characters = (mean_field.orbitals.by_spin().into_iter())
-        .map(|(_, set)| orbitals::characters(molecule, &basis, &overlap, set))
+    let group = symmetry::find(molecule, SYMMETRY_TOLERANCE_ANGSTROM);
+    let portraits = (mean_field.orbitals.by_spin().into_iter())
+        .map(|(_, set)| portraits(molecule, &group, &basis, &overlap, set))
         .collect::<Result<Vec<_>, _>>()?;
     let core = molecule.core_orbital_count();
     Ok(Levels {
         schema: SCHEMA.to_owned(),
         program: PROGRAM.to_owned(),
-        molecule: summary(molecule),
+        molecule: summary(molecule, &group),
         level: Level {
             method: settings.level.method,
             basis: basis.name.clone(),
@@ -74,17 +79,46 @@ pub fn levels_of(
             converged: true,
             dipole_debye: mean_field.dipole_debye,
         },
-        orbitals: ionization::orbital_lines(&mean_field.orbitals, core, &characters, EMPTY_SHOWN),
+        orbitals: ionization::orbital_lines(&mean_field.orbitals, core, &portraits, EMPTY_SHOWN)?,
         hole_states: match settings.level.method {
-            Method::Koopmans => ionization::koopmans(&mean_field.orbitals, core, &characters)?,
+            Method::Koopmans => ionization::koopmans(&mean_field.orbitals, core, &portraits)?,
         },
     })
+}
+
+/// An atom may stand this far from its symmetric place, Å: more than the rounding of published
+/// geometries, less than any distortion that matters to a spectrum.
+const SYMMETRY_TOLERANCE_ANGSTROM: f64 = 5e-3;
+
+/// Label and character of every orbital of one spin.
+fn portraits(
+    molecule: &Molecule,
+    group: &PointGroup,
+    basis: &Basis,
+    overlap: &DMatrix<f64>,
+    set: &SpinOrbitals,
+) -> Result<Vec<Portrait>, StudyError> {
+    let symmetries = irreps::labels(
+        group,
+        molecule,
+        basis,
+        overlap,
+        &set.coefficients,
+        &set.energies,
+    )?;
+    let characters = orbitals::characters(molecule, basis, overlap, set)?;
+    Ok((symmetries.into_iter().zip(characters))
+        .map(|(symmetry, character)| Portrait {
+            label: symmetry.label,
+            character,
+        })
+        .collect())
 }
 
 /// Empty orbitals listed beside the occupied ones.
 const EMPTY_SHOWN: usize = 3;
 
-fn summary(molecule: &Molecule) -> MoleculeSummary {
+fn summary(molecule: &Molecule, group: &PointGroup) -> MoleculeSummary {
     let atoms = (molecule.atoms.iter())
         .zip(molecule.positions_angstrom())
         .map(|(atom, position)| AtomLine {
@@ -99,7 +133,7 @@ fn summary(molecule: &Molecule) -> MoleculeSummary {
         formula: molecule.formula(),
         charge: molecule.charge,
         multiplicity: molecule.multiplicity,
-        point_group: None,
+        point_group: Some(group.symbol.to_string()),
         atoms,
     }
 }

@@ -7,10 +7,10 @@ use crate::assign::Assignment;
 use crate::fit::Grouping;
 use crate::levels::{Levels, LineKind};
 use crate::report::{
-    AssignmentSummary, BandCurve, Dossier, FitSummary, GroupingOdds, Overlay, OverlayStick, SCHEMA,
+    AssignmentSummary, BandCurve, Dossier, FitSummary, Overlay, OverlayStick, SCHEMA,
     TraceSummary,
 };
-use crate::trace::{Axis, Trace};
+use crate::trace::Axis;
 
 /// Puts a finished study on record.
 pub(super) fn fill(
@@ -32,28 +32,10 @@ pub(super) fn fill(
         program: PROGRAM.to_owned(),
         title: settings.name.clone(),
         study,
-        trace: trace_summary(&measured.trace),
+        trace: TraceSummary::of(&measured.trace),
         bands: grouping.bands.clone(),
-        fit: FitSummary {
-            groupings: (measured.fit.groupings.iter())
-                .map(|g| GroupingOdds {
-                    probability: g.probability,
-                    vertical_ev: g.bands.iter().map(|b| b.vertical_ev).collect(),
-                })
-                .collect(),
-            statistics: measured.fit.statistics,
-            peaks: measured.fit.peaks,
-            undetermined: measured.fit.undetermined,
-            correlations: measured.fit.correlations,
-        },
-        assignment: AssignmentSummary {
-            grouping: assignment.grouping,
-            grouping_probability: assignment.grouping_probability,
-            shift_ev: assignment.shift_ev,
-            shift_sd_ev: assignment.shift_sd_ev,
-            scale: assignment.scale,
-            unseen: assignment.unseen,
-        },
+        fit: FitSummary::of(&measured.fit),
+        assignment: AssignmentSummary::of(&assignment),
         levels,
         matches: assignment.matches,
         remarks: assignment.remarks,
@@ -68,7 +50,7 @@ pub(super) fn measured_overlay(measured: &Measured, grouping: &Grouping) -> Over
     // counts themselves are what the chemist knows.
     let (unit, factor) = match trace.axis {
         Axis::FlightTime { .. } => ("counts per eV", 1.0),
-        Axis::Ionization | Axis::Kinetic => ("counts", trace.exposure_ev[0]),
+        Axis::Ionization | Axis::Kinetic | Axis::Wavenumber => ("counts", trace.exposure_ev[0]),
     };
     let shown = |intensity: &[f64]| intensity.iter().map(|y| y * factor).collect::<Vec<_>>();
     let per_ev = |values: &[f64]| {
@@ -77,17 +59,9 @@ pub(super) fn measured_overlay(measured: &Measured, grouping: &Grouping) -> Over
             .collect::<Vec<_>>()
     };
     let bands = (grouping.bands.iter())
-        .map(|band| {
-            let intensity = (trace.energy_ev.iter())
-                .map(|&energy| {
-                    let members = band.members.iter().map(|m| &fit.peaks[m.peak]);
-                    factor * members.map(|peak| peak.intensity(energy)).sum::<f64>()
-                })
-                .collect();
-            BandCurve {
-                band: band.id,
-                intensity,
-            }
+        .map(|band| BandCurve {
+            band: band.id,
+            intensity: shown(&fit.band_curve(band, &trace.energy_ev)),
         })
         .collect();
     Overlay {
@@ -98,25 +72,9 @@ pub(super) fn measured_overlay(measured: &Measured, grouping: &Grouping) -> Over
         fit: shown(&fit.total),
         background: shown(&fit.background),
         bands,
-        residual: residuals(measured),
+        residual: fit.residuals.clone(),
         ..Overlay::default()
     }
-}
-
-/// (Measured − fit) in standard deviations of the fitted counts where they are Poisson, else of
-/// the stated ones.
-fn residuals(measured: &Measured) -> Vec<f64> {
-    let Measured { trace, fit } = measured;
-    (0..trace.len())
-        .map(|i| {
-            let expected = fit.total[i] * trace.exposure_ev[i];
-            let sd = match trace.noise {
-                crate::trace::Noise::Poisson => crate::trace::poisson_sd(expected),
-                crate::trace::Noise::Stated => trace.sd[i],
-            };
-            (trace.counts[i] - expected) / sd
-        })
-        .collect()
 }
 
 fn sticks(levels: &Levels, assignment: &Assignment) -> Vec<OverlayStick> {
@@ -133,16 +91,4 @@ fn sticks(levels: &Levels, assignment: &Assignment) -> Vec<OverlayStick> {
             verdict: state.character.verdict,
         })
         .collect()
-}
-
-pub(super) fn trace_summary(trace: &Trace) -> TraceSummary {
-    TraceSummary {
-        source: trace.source.clone(),
-        channels: trace.len(),
-        span_ev: trace.span_ev(),
-        photon_energy_ev: trace.photon_energy_ev,
-        axis: trace.axis,
-        noise: trace.noise,
-        comments: trace.comments.clone(),
-    }
 }

@@ -18,6 +18,7 @@ use crate::ionization::IonizationError;
 use crate::lineshape::ShapeError;
 use crate::molecule::GeometryError;
 use crate::orbitals::CharacterError;
+use crate::orbitals::irreps::IrrepError;
 use crate::report::ReportError;
 use crate::scf::ScfError;
 use crate::trace::TraceError;
@@ -83,6 +84,9 @@ pub enum StudyError {
     /// The orbitals cannot be analysed.
     #[error(transparent)]
     Character(#[from] CharacterError),
+    /// The orbitals cannot be labelled.
+    #[error(transparent)]
+    Labels(#[from] IrrepError),
     /// Hole states cannot be made.
     #[error(transparent)]
     Ionization(#[from] IonizationError),
@@ -119,8 +123,8 @@ pub enum Event {
         iteration: usize,
         /// Energy, hartree.
         energy_hartree: f64,
-        /// Largest element of the orbital gradient.
-        gradient: f64,
+        /// Largest element of the orbital gradient, hartree.
+        gradient_hartree: f64,
     },
     /// The fit moved on.
     Fit(String),
@@ -133,10 +137,10 @@ impl fmt::Display for Event {
             Event::Scf {
                 iteration,
                 energy_hartree,
-                gradient,
+                gradient_hartree,
             } => write!(
                 f,
-                "orbitals: iteration {iteration}, energy {energy_hartree:.8} hartree, gradient {gradient:.1e}"
+                "orbitals: iteration {iteration}, energy {energy_hartree:.8} hartree, gradient {gradient_hartree:.1e}"
             ),
             Event::Fit(text) => write!(f, "fit: {text}"),
         }

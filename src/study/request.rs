@@ -51,7 +51,9 @@ pub struct MoleculeRequest {
 pub struct TraceRequest {
     /// Measured file, relative to the study file.
     pub file: Option<PathBuf>,
-    /// `ionization`, `kinetic` or `flight-time`; read from the file if absent.
+    /// Which trace of the file, by name or number from 1, where it holds several.
+    pub choice: Option<Choice>,
+    /// `ionization`, `kinetic`, `wavenumber` or `flight-time`; read from the file if absent.
     pub axis: Option<AxisName>,
     /// Photon energy, eV.
     pub photon_energy_ev: Option<Positive>,
@@ -117,6 +119,8 @@ pub enum AxisName {
     Ionization,
     /// Kinetic energy.
     Kinetic,
+    /// Ionization (binding) energy as a wavenumber.
+    Wavenumber,
     /// Flight time.
     FlightTime,
 }
@@ -127,6 +131,7 @@ impl AxisName {
         match self {
             AxisName::Ionization => "ionization",
             AxisName::Kinetic => "kinetic",
+            AxisName::Wavenumber => "wavenumber",
             AxisName::FlightTime => "flight-time",
         }
     }
@@ -136,10 +141,19 @@ impl std::str::FromStr for AxisName {
     type Err = String;
 
     fn from_str(text: &str) -> Result<Self, String> {
-        [Self::Ionization, Self::Kinetic, Self::FlightTime]
+        let known = [
+            Self::Ionization,
+            Self::Kinetic,
+            Self::Wavenumber,
+            Self::FlightTime,
+        ];
+        known
             .into_iter()
             .find(|axis| axis.name() == text)
-            .ok_or_else(|| format!("found '{text}', expected ionization, kinetic or flight-time"))
+            .ok_or_else(|| {
+                let names = known.map(Self::name).join(", ");
+                format!("found '{text}', expected one of {names}")
+            })
     }
 }
 

@@ -166,6 +166,7 @@ impl TraceSettings {
             None => None,
             Some(AxisName::Ionization) => Some(Axis::Ionization),
             Some(AxisName::Kinetic) => Some(Axis::Kinetic),
+            Some(AxisName::Wavenumber) => Some(Axis::Wavenumber),
             Some(AxisName::FlightTime) => Some(Axis::FlightTime {
                 length_m: (request.flight_length_m.map(Into::into)).ok_or_else(|| {
                     missing("trace.flight_length_m", "the flight length in metres")
@@ -179,6 +180,7 @@ impl TraceSettings {
             path: base.join(&file),
             file,
             read: ReadOptions {
+                trace: request.choice.clone(),
                 axis,
                 photon_energy_ev: request.photon_energy_ev.map(Into::into),
                 energy_column: request.energy_column.clone(),

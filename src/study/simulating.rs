@@ -4,6 +4,8 @@ use super::settings::TheorySettings;
 use super::{Observer, StudyError, compute};
 use crate::levels::{HoleState, Levels};
 use crate::predict::{Instrument, PredictedTrace, predict};
+use crate::report::{self, Overlay, OverlayStick, PredictedCurve, Heading};
+use std::path::{Path, PathBuf};
 
 /// Settings of `simulate`.
 #[derive(Debug, Clone, PartialEq)]
@@ -27,6 +29,58 @@ pub struct Simulation {
     pub levels: Levels,
     /// The predicted trace.
     pub predicted: PredictedTrace,
+    /// What it was made with.
+    pub instrument: Instrument,
+}
+
+impl Simulation {
+    /// Writes levels, curve and figure into a folder; returns the files.
+    ///
+    /// # Errors
+    /// An output that cannot be made or written.
+    pub fn write(&self, folder: &Path) -> Result<Vec<PathBuf>, StudyError> {
+        let Self {
+            levels,
+            predicted,
+            instrument,
+        } = self;
+        let molecule = &levels.molecule;
+        let mut details = format!(
+            "{} · resolution {} eV",
+            levels.level, instrument.gaussian_fwhm_ev
+        );
+        if instrument.energy_scale != 1.0 || instrument.energy_shift_ev != 0.0 {
+            details += &format!(
+                " · shifted: {} × computed {:+} eV",
+                instrument.energy_scale, instrument.energy_shift_ev
+            );
+        }
+        let heading = Heading {
+            title: format!("{}, {}", molecule.name, molecule.formula),
+            details,
+        };
+        let sticks = (predicted.states.iter()).filter_map(|curve| {
+            let state = levels.hole_states.iter().find(|s| s.label == curve.label)?;
+            Some(OverlayStick {
+                label: curve.label.clone(),
+                computed_ev: state.ionization_energy_ev,
+                shifted_ev: curve.energy_ev,
+                height: curve.weight,
+                band: None,
+                verdict: state.character.verdict,
+            })
+        });
+        let overlay = Overlay {
+            unit: "arbitrary units".to_owned(),
+            sticks: sticks.collect(),
+            predicted: Some(PredictedCurve {
+                energy_ev: predicted.energy_ev.clone(),
+                intensity: predicted.total.clone(),
+            }),
+            ..Overlay::default()
+        };
+        Ok(report::write_prediction(&heading, &overlay, levels, folder)?)
+    }
 }
 
 /// Points per line width on the predicted axis.
@@ -70,5 +124,6 @@ pub fn run(settings: &SimulateSettings, observer: Observer) -> Result<Simulation
     Ok(Simulation {
         predicted: predict(&states, &instrument, &energies)?,
         levels,
+        instrument,
     })
 }

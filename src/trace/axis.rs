@@ -36,6 +36,20 @@ pub(super) fn to_trace(
     options: &ReadOptions,
 ) -> Result<Trace, TraceError> {
     let whole = |problem| TraceError::file(source, problem);
+    if let Some((unit, expected)) = &record.foreign_unit
+        && !record.converted
+    {
+        let (column, unit) = (record.abscissa_name.clone(), unit.clone());
+        let problem = Problem::Unit {
+            column,
+            unit,
+            expected,
+        };
+        return Err(TraceError {
+            line: record.abscissa_line,
+            ..whole(problem)
+        });
+    }
     check_points(&record, source)?;
     let mut notes = record.notes.clone();
     let photon = settle_photon_energy(&record, options, &mut notes).map_err(whole)?;

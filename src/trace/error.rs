@@ -2,6 +2,9 @@
 
 use thiserror::Error;
 
+use super::jcamp::JcampProblem;
+use super::vamas::VamasProblem;
+
 /// A file that could not be read as a trace: where, and what the problem is.
 #[derive(Debug, Clone, PartialEq, Error)]
 #[error("{}{problem}", place(.file, *.line, *.column))]
@@ -69,6 +72,19 @@ pub enum Problem {
     Binary { byte: usize },
     #[error("the file is UTF-16; save it as UTF-8 or plain text")]
     Utf16,
+
+    #[error("found {count} traces: {there}; say which with trace (a name or a number)")]
+    SeveralTraces { count: usize, there: String },
+    #[error("found {count} traces, so there is no trace {wanted}; count from 1")]
+    TraceOutOfRange { wanted: usize, count: usize },
+    #[error("found no trace named '{wanted}'; there are {there}")]
+    UnknownTrace { wanted: String, there: String },
+    #[error("found several traces named '{wanted}': {there}; choose by number")]
+    AmbiguousTrace { wanted: String, there: String },
+    #[error(transparent)]
+    Jcamp(#[from] JcampProblem),
+    #[error(transparent)]
+    Vamas(#[from] VamasProblem),
 
     #[error("found only comments; expected rows of energy and counts")]
     OnlyComments,
@@ -138,7 +154,7 @@ pub enum Problem {
         width: usize,
         option: &'static str,
     },
-    #[error("column '{column}' is in {unit}; expected {expected}")]
+    #[error("the axis '{column}' is in {unit}; expected {expected}")]
     Unit {
         column: String,
         unit: String,

@@ -14,9 +14,15 @@
 mod axis;
 mod delimited;
 mod error;
+mod file;
+mod jcamp;
 mod options;
 mod record;
 mod regroup;
+mod stated;
+mod text;
+mod vamas;
+mod words;
 
 use std::path::Path;
 
@@ -24,8 +30,11 @@ use serde::{Deserialize, Serialize};
 
 pub use delimited::write_delimited;
 pub use error::{Problem, TraceError};
+pub use file::{Content, Format, TraceFile};
+pub use jcamp::{JcampProblem, Ordinates, write_jcamp};
 pub use options::{Choice, DecimalMark, Delimiter, ReadOptions};
-pub use record::Record;
+pub use record::{Meaning, Record};
+pub use vamas::VamasProblem;
 
 /// Fewest channels that make a trace: below this no band can be told from its background.
 pub const MIN_CHANNELS: usize = 8;
@@ -136,47 +145,20 @@ pub fn poisson_sd(count: f64) -> f64 {
     count.max(1.0).sqrt()
 }
 
-/// Reads the trace in the file at `path`.
+/// Reads a trace from the file at `path`: the one that `options` choose, where there are several.
 ///
 /// # Errors
 /// [`TraceError`] with file, line and column, what was found and what was expected.
 pub fn read(path: &Path, options: &ReadOptions) -> Result<Trace, TraceError> {
-    let source = path.display().to_string();
-    let bytes = std::fs::read(path)
-        .map_err(|e| TraceError::file(&source, Problem::Unreadable(e.to_string())))?;
-    from_bytes(&bytes, &source, options)
+    TraceFile::read(path, options)?.into_trace(options)
 }
 
 /// Reads a trace from the bytes of a file; `source` is the name used in messages.
 ///
-/// Text is UTF-8, with or without a byte-order mark. Other eight-bit text is read as Latin-1,
-/// with a note: numbers are the same in both, comments nearly always.
-///
 /// # Errors
 /// As [`read`].
 pub fn from_bytes(bytes: &[u8], source: &str, options: &ReadOptions) -> Result<Trace, TraceError> {
-    if bytes.starts_with(&[0xFF, 0xFE]) || bytes.starts_with(&[0xFE, 0xFF]) {
-        return Err(TraceError::file(source, Problem::Utf16));
-    }
-    if let Some(at) = bytes.iter().position(|&b| b == 0) {
-        return Err(TraceError::file(source, Problem::Binary { byte: at + 1 }));
-    }
-    match std::str::from_utf8(bytes) {
-        Ok(text) => from_text(text, source, options),
-        Err(bad) => {
-            let line = bytes[..bad.valid_up_to()]
-                .iter()
-                .filter(|&&b| b == b'\n')
-                .count()
-                + 1;
-            let text: String = bytes.iter().map(|&b| char::from(b)).collect();
-            let mut trace = from_text(&text, source, options)?;
-            trace.notes.push(format!(
-                "line {line} is not UTF-8: the file was read as Latin-1"
-            ));
-            Ok(trace)
-        }
-    }
+    TraceFile::from_bytes(bytes, source, options)?.into_trace(options)
 }
 
 /// Reads a trace from text; `source` is the name used in messages.
@@ -184,8 +166,5 @@ pub fn from_bytes(bytes: &[u8], source: &str, options: &ReadOptions) -> Result<T
 /// # Errors
 /// As [`read`].
 pub fn from_text(text: &str, source: &str, options: &ReadOptions) -> Result<Trace, TraceError> {
-    let text = text.strip_prefix('\u{feff}').unwrap_or(text);
-    let text = text.trim_end_matches('\u{1a}');
-    let record = delimited::read(text, source, options)?;
-    axis::to_trace(record, source, options)
+    TraceFile::from_text(text, source, options)?.into_trace(options)
 }

@@ -12,6 +12,8 @@ use super::Axis;
 #[derive(Debug, Clone, Default, PartialEq, Serialize, Deserialize)]
 #[serde(default)]
 pub struct ReadOptions {
+    /// Which trace of the file, where it holds several.
+    pub trace: Option<Choice>,
     /// How the axis was recorded. Without it the file's own words decide, and a note says so.
     pub axis: Option<Axis>,
     /// Photon energy, eV. Kinetic energies and flight times need it.

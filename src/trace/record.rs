@@ -5,6 +5,8 @@ use super::{Axis, Noise};
 /// One trace of a file before its axis is converted.
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct Record {
+    /// Its name within the file; empty where the format has none.
+    pub name: String,
     /// The axis values in the order of the file: energies, wavenumbers or flight times.
     pub abscissa: Vec<f64>,
     /// The counts.
@@ -15,12 +17,16 @@ pub struct Record {
     pub exposure_ev: Option<Vec<f64>>,
     /// The line of the file that each point came from.
     pub lines: Vec<u32>,
+    /// The line that names the abscissa.
+    pub abscissa_line: Option<usize>,
     /// What the file calls the abscissa.
     pub abscissa_name: String,
     /// What may have gone wrong where the abscissa makes no axis; empty, or a clause in brackets.
     pub axis_hint: &'static str,
     /// What the file's words say the abscissa is.
     pub meaning: Meaning,
+    /// The unit of the abscissa and what is expected instead, where it is none that we convert.
+    pub foreign_unit: Option<(String, &'static str)>,
     /// Where the words were found ("the header", "the comment in line 3"); empty where nowhere.
     pub meaning_from: String,
     /// The axis, where the file states it outright.

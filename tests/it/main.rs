@@ -11,4 +11,5 @@ mod layers;
 mod measured;
 mod reporting;
 mod shapes;
+mod symmetry;
 mod traces;

@@ -1,6 +1,9 @@
 //! Reading traces: every dialect of delimited text, every axis, every way to be wrong, and the
 //! way back to a file.
 
+mod jcamp;
+mod vamas;
+
 use std::collections::BTreeSet;
 use std::fs;
 use std::path::Path;
@@ -325,7 +328,7 @@ fn statements_in_comments_are_honoured_and_noted() {
         (trace.axis, trace.photon_energy_ev),
         (Axis::Kinetic, Some(21.218))
     );
-    assert!(trace.notes[1].contains("line 2 gives the photon energy: 21.218 eV"));
+    assert!(trace.notes[1].contains("line 2 of the file gives photon energy: 21.218 eV"));
     let other = ReadOptions {
         photon_energy_ev: Some(40.814),
         ..Default::default()

@@ -8,13 +8,6 @@ use super::super::{DecimalMark, Delimiter};
 /// Marks that make a line a comment when they stand at its beginning.
 pub(super) const COMMENT_MARKS: [&str; 5] = ["#", "%", ";", "!", "//"];
 
-/// The lines of a text without their ends, whatever ends them (LF, CR LF, or CR alone).
-pub(super) fn lines(text: &str) -> impl Iterator<Item = &str> + Clone {
-    let end = if text.contains('\n') { '\n' } else { '\r' };
-    text.split(end)
-        .map(|line| line.strip_suffix('\r').unwrap_or(line))
-}
-
 /// The text of a comment line without its mark; `None` for other lines.
 pub(super) fn comment(line: &str) -> Option<&str> {
     let line = line.trim_start();
@@ -112,11 +105,6 @@ pub(super) fn number(text: &str, mark: DecimalMark) -> Option<f64> {
     }
 }
 
-/// Character of the line, counted from 1, at a byte.
-pub(super) fn character(line: &str, byte: usize) -> usize {
-    line[..byte].chars().count() + 1
-}
-
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -169,9 +157,7 @@ mod tests {
     }
 
     #[test]
-    fn line_ends_and_comments() {
-        assert_eq!(lines("a\r\nb\n").collect::<Vec<_>>(), ["a", "b", ""]);
-        assert_eq!(lines("a\rb").collect::<Vec<_>>(), ["a", "b"]);
+    fn comments_by_mark() {
         assert_eq!(comment("  // x"), Some(" x"));
         assert_eq!(comment("1 # x"), None);
     }

@@ -6,18 +6,20 @@
 mod cells;
 mod columns;
 mod dialect;
-mod stated;
 mod write;
 
-use cells::{Cell, character, comment, lines, number, split};
+use cells::{Cell, comment, number, split};
 use columns::Columns;
 use dialect::{CommaWatch, Dialect};
-use stated::Stated;
 
 use super::error::{Problem, TraceError, shorten};
 use super::record::{Meaning, Record};
+use super::stated::Stated;
+use super::text::{character, numbered_lines};
+use super::words;
 use super::{DecimalMark, Delimiter, ReadOptions};
 
+pub(super) use write::exact;
 pub use write::write_delimited;
 
 /// Reads the text as one record.
@@ -52,8 +54,11 @@ pub(super) fn read(text: &str, source: &str, options: &ReadOptions) -> Result<Re
     };
     let mut record = reading.rows(text, &stated)?;
 
-    let about = reading.meaning(&stated)?;
-    (record.meaning, record.meaning_from) = about;
+    (record.meaning, record.meaning_from) = reading.meaning(&stated);
+    if let Some(name) = layout.names.get(columns.energy) {
+        record.foreign_unit = words::foreign_unit(name, words::meaning(name));
+    }
+    record.abscissa_line = layout.line;
     record.axis = stated
         .axis()
         .map_err(|problem| TraceError::file(source, problem))?;
@@ -71,10 +76,6 @@ pub(super) fn read(text: &str, source: &str, options: &ReadOptions) -> Result<Re
     }
     record.comments = stated.comments.into_iter().map(|(_, text)| text).collect();
     Ok(record)
-}
-
-fn numbered_lines(text: &str) -> impl Iterator<Item = (usize, &str)> + Clone {
-    lines(text).enumerate().map(|(i, line)| (i + 1, line))
 }
 
 /// Lines that are neither comments nor empty.
@@ -172,7 +173,7 @@ impl Layout {
         let named: Vec<Vec<String>> = named.collect();
         let telling = named
             .iter()
-            .map(|names| columns::telling(names))
+            .map(|names| words::telling(names))
             .collect::<Vec<_>>();
         let most = telling.iter().copied().max().unwrap_or(0);
         // Of several such lines the first that tells most is the header, the next its units.
@@ -228,7 +229,7 @@ impl Layout {
             .find(|(line, _)| (1..self.first).contains(line));
         let Some((line, text)) = before else { return };
         if let Some(names) = head_cells(text, dialect, self.width)
-            && columns::telling(&names) > 0
+            && words::telling(&names) > 0
         {
             self.names = names;
             self.line = Some(*line);
@@ -435,40 +436,26 @@ impl Reading<'_> {
     }
 
     /// What the axis column is by the header, else by the comments if all that speak agree.
-    fn meaning(&self, stated: &Stated) -> Result<(Meaning, String), TraceError> {
+    fn meaning(&self, stated: &Stated) -> (Meaning, String) {
         if let Some(name) = self.layout.names.get(self.columns.energy) {
-            let meaning = columns::meaning(name);
-            if let Some((unit, expected)) = columns::foreign_unit(name, meaning)
-                && !stated.ours
-            {
-                let problem = Problem::Unit {
-                    column: name.clone(),
-                    unit,
-                    expected,
-                };
-                return Err(TraceError {
-                    line: self.layout.line,
-                    ..TraceError::file(self.source, problem)
-                });
-            }
+            let meaning = words::meaning(name);
             if meaning != Meaning::Unsaid {
-                return Ok((meaning, format!("its header '{name}'")));
+                return (meaning, format!("its header '{name}'"));
             }
         }
-        let spoken =
-            stated
-                .comments
-                .iter()
-                .filter_map(|(line, text)| match columns::meaning(text) {
-                    meaning @ (Meaning::Ionization | Meaning::Kinetic) => Some((*line, meaning)),
-                    _ => None,
-                });
+        let spoken = stated
+            .comments
+            .iter()
+            .filter_map(|(line, text)| match words::meaning(text) {
+                meaning @ (Meaning::Ionization | Meaning::Kinetic) => Some((*line, meaning)),
+                _ => None,
+            });
         let spoken: Vec<(usize, Meaning)> = spoken.collect();
         match spoken[..] {
             [(line, meaning), ..] if spoken.iter().all(|s| s.1 == meaning) => {
-                Ok((meaning, format!("the comment in line {line}")))
+                (meaning, format!("the comment in line {line}"))
             }
-            _ => Ok((Meaning::Unsaid, String::new())),
+            _ => (Meaning::Unsaid, String::new()),
         }
     }
 }

@@ -2,10 +2,11 @@
 
 use std::io::{self, Write};
 
-use super::super::{Axis, Noise, Trace};
-use super::stated::{
-    AXIS, COMMENT, LENGTH, MARK, NOISE, NOTE, PHOTON, RETARDING, SOURCE, TIME_ZERO, escape,
+use super::super::stated::{
+    AXIS, COMMENT, LENGTH, NOISE, NOTE, PHOTON, RETARDING, SOURCE, TIME_ZERO, TRACE, VERSION,
+    escape,
 };
+use super::super::{Axis, Noise, Trace};
 
 /// The columns of our own files.
 pub(super) const COLUMNS: [&str; 4] = ["energy_ev", "counts", "sd", "exposure_ev"];
@@ -18,7 +19,7 @@ pub(super) const COLUMNS: [&str; 4] = ["energy_ev", "counts", "sd", "exposure_ev
 /// # Errors
 /// Those of the writer.
 pub fn write_delimited(trace: &Trace, out: &mut impl Write) -> io::Result<()> {
-    writeln!(out, "# {MARK}")?;
+    writeln!(out, "# {TRACE}: {VERSION}")?;
     writeln!(out, "# {SOURCE}: {}", escape(&trace.source))?;
     writeln!(out, "# {AXIS}: {}", trace.axis.name())?;
     if let Axis::FlightTime {
@@ -59,7 +60,7 @@ pub fn write_delimited(trace: &Trace, out: &mut impl Write) -> io::Result<()> {
 }
 
 /// The shortest text that reads back as the same number.
-pub(super) fn exact(value: f64) -> String {
+pub(in super::super) fn exact(value: f64) -> String {
     let size = value.abs();
     if size == 0.0 || (1e-5..1e16).contains(&size) {
         format!("{value}")

@@ -6,11 +6,13 @@
 //! file the same lines about axis, photon energy and calibration are honoured, each with a note;
 //! one that is nearly right is left alone, also with a note.
 
-use super::super::error::Problem;
-use super::super::{Axis, Noise};
+use super::error::Problem;
+use super::{Axis, Noise};
 
-/// The mark of a file that we wrote.
-pub(super) const MARK: &str = "trace: bandproof/trace/1";
+/// Key of the mark of a file that we wrote.
+pub(super) const TRACE: &str = "trace";
+/// The mark's value: the version of this form.
+pub(super) const VERSION: &str = "bandproof/trace/1";
 
 pub(super) const SOURCE: &str = "source";
 pub(super) const AXIS: &str = "axis";
@@ -21,6 +23,11 @@ pub(super) const RETARDING: &str = "retarding potential";
 pub(super) const NOISE: &str = "noise";
 pub(super) const NOTE: &str = "note";
 pub(super) const COMMENT: &str = "comment";
+
+/// Every key of a statement.
+pub(super) const KEYS: [&str; 9] = [
+    SOURCE, AXIS, PHOTON, LENGTH, TIME_ZERO, RETARDING, NOISE, NOTE, COMMENT,
+];
 
 /// What the comment lines of a file state.
 #[derive(Debug, Default, PartialEq)]
@@ -42,7 +49,7 @@ pub(super) struct Stated {
 impl Stated {
     /// Takes in the text of one comment line, without its mark.
     pub fn take(&mut self, line: usize, text: &str) -> Result<(), Problem> {
-        if line == 1 && text.trim() == MARK {
+        if line == 1 && text.trim().split_once(": ") == Some((TRACE, VERSION)) {
             self.ours = true;
             return Ok(());
         }
@@ -53,43 +60,51 @@ impl Stated {
             let (key, value) = text
                 .split_once(": ")
                 .unwrap_or((text.trim_end_matches(':'), ""));
-            match key {
-                COMMENT => self.comments.push((0, unescape(value))),
-                NOTE => self.notes.push(unescape(value)),
-                SOURCE => self.source = Some(unescape(value)),
-                NOISE => {
-                    let noise = match value {
-                        "poisson" => Some(Noise::Poisson),
-                        "stated" => Some(Noise::Stated),
-                        _ => None,
-                    };
-                    self.noise = Some(noise.ok_or_else(|| bad(NOISE, value))?);
-                }
-                _ if self.quantity(key, value)? => {}
-                _ if trimmed.is_empty() => {}
-                _ => self.comments.push((line, trimmed.to_string())),
+            if !self.own(key, value)? && !trimmed.is_empty() {
+                self.comments.push((line, trimmed.to_string()));
             }
             return Ok(());
         }
-        if trimmed.is_empty() {
-            return Ok(());
+        if !trimmed.is_empty() {
+            self.comments.push((line, trimmed.to_string()));
         }
-        self.comments.push((line, trimmed.to_string()));
-        let Some((key, value)) = trimmed.split_once(": ") else {
-            return Ok(());
-        };
-        match self.quantity(key, value.trim()) {
-            Ok(true) => self
-                .notes
-                .push(format!("the comment in line {line} gives the {trimmed}")),
-            Ok(false) => {}
-            Err(problem) => {
-                self.notes.push(format!(
-                    "the comment in line {line} was not used: {problem}"
-                ));
-            }
+        if let Some((key, value)) = trimmed.split_once(": ") {
+            self.foreign(line, key, value.trim());
         }
         Ok(())
+    }
+
+    /// Takes a statement of a file that we wrote; false where it is none.
+    pub fn own(&mut self, key: &str, value: &str) -> Result<bool, Problem> {
+        match key {
+            COMMENT => self.comments.push((0, unescape(value))),
+            NOTE => self.notes.push(unescape(value)),
+            SOURCE => self.source = Some(unescape(value)),
+            NOISE => {
+                let noise = match value {
+                    "poisson" => Some(Noise::Poisson),
+                    "stated" => Some(Noise::Stated),
+                    _ => None,
+                };
+                self.noise = Some(noise.ok_or_else(|| bad(NOISE, value))?);
+            }
+            _ => return self.quantity(key, value),
+        }
+        Ok(true)
+    }
+
+    /// Takes a statement of a file that we did not write, if it is one, with a note.
+    pub fn foreign(&mut self, line: usize, key: &str, value: &str) {
+        match self.quantity(key, value) {
+            Ok(true) => self
+                .notes
+                .push(format!("line {line} of the file gives {key}: {value}")),
+            Ok(false) => {}
+            Err(problem) => {
+                self.notes
+                    .push(format!("line {line} of the file was not used: {problem}"));
+            }
+        }
     }
 
     /// Takes a statement about axis, photon energy or calibration; false where it is none.
