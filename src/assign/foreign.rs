@@ -26,11 +26,26 @@ const ENVELOPE_SD_EV: f64 = 0.06;
 const ENVELOPE_WIDTH_LN_SD: f64 = 0.3;
 /// See [`ENVELOPE_WIDTH_LN_SD`].
 const WIDTH_LN_RANGE: f64 = 4.0;
-/// What is left of a candidate gas for each of its lines that ought to be seen and is not.
+/// What is left of a candidate gas for each of its lines that ought to be seen and is not: where
+/// it would be a few times the faintest band, and where it could not be overlooked.
 const ABSENT_LINE: f64 = 0.2;
+/// See [`ABSENT_LINE`].
+const ABSENT_STRONG_LINE: f64 = 0.01;
+/// Areas, as multiples of the faintest band's, from which a line ought to be found and from which
+/// it could not be overlooked.
+pub(super) const FOUND_FROM: f64 = 2.0;
+/// See [`FOUND_FROM`].
+const STRONG_FROM: f64 = 10.0;
+/// A sharp line is hidden under a band if it stands lower than this share of the band's mean
+/// height; the width of such a line, eV.
+const HIDDEN_HEIGHT: f64 = 0.2;
+/// See [`HIDDEN_HEIGHT`].
+const LINE_WIDTH_EV: f64 = 0.04;
 /// Standard deviation of the logarithm of a line's share in its gas: the tabulated shares are
 /// rough and the analyser's transmission is not known.
 const GAS_SHARE_LN_SD: f64 = 0.6;
+/// A line this close to a tabulated energy may be that line, eV: some scale offsets.
+const SAME_LINE_EV: f64 = 0.08;
 /// A photon energy this close to a lamp's main line names the lamp, eV.
 const LAMP_TOLERANCE_EV: f64 = 0.05;
 
@@ -196,7 +211,10 @@ impl Surroundings {
         weight *= normal(deviation_ev - offset, variance);
         weight *= self.gas_look(band, data[at].look, line, offset, variance.sqrt());
         for other in same_gas().filter(|l| l.line != line.line && l.shape == "line") {
-            if ought_to_show(bands, data, at, prior, line, other) {
+            let over_faintest = ought_to_show(bands, data, at, prior, line, other);
+            if over_faintest > STRONG_FROM {
+                weight *= ABSENT_STRONG_LINE;
+            } else if over_faintest > FOUND_FROM {
                 weight *= ABSENT_LINE;
             }
         }
@@ -272,8 +290,9 @@ pub(super) fn anchor_ev(band: &Band) -> f64 {
     }
 }
 
-/// Whether `other`, a line of the same gas, should be a band of its own if band `at` is `line`:
-/// strong enough to be found, inside the window, and not hidden under another band.
+/// How strongly `other`, a line of the same gas, should show as a line of its own if band `at` is
+/// `line`: its area as a multiple of the faintest band's; 0 where it lies outside the window, is
+/// hidden, or may be what another band shows.
 pub(super) fn ought_to_show(
     bands: &[&Band],
     data: &[Datum],
@@ -281,15 +300,24 @@ pub(super) fn ought_to_show(
     prior: &Prior,
     line: &GasLine,
     other: &GasLine,
-) -> bool {
+) -> f64 {
     let area = |i: usize| data[i].ln_area.map_or(0.0, |(ln_area, _)| ln_area.exp());
     let faintest = (0..bands.len()).map(area).fold(f64::INFINITY, f64::min);
     let expected = area(at) * other.share / line.share;
     let [low, high] = prior.visible_ev;
-    expected > 2.0 * faintest
-        && other.energy_ev > low + 0.1
-        && other.energy_ev < high - 0.1
-        && !bands.iter().any(|band| covers(band, other.energy_ev))
+    let inside = other.energy_ev > low + 0.1 && other.energy_ev < high - 0.1;
+    let hidden = (0..bands.len()).any(|i| {
+        let height = area(i) / bands[i].fwhm_ev.max(LINE_WIDTH_EV);
+        covers(bands[i], other.energy_ev) && expected / LINE_WIDTH_EV < HIDDEN_HEIGHT * height
+    });
+    let shown = (bands.iter()).any(|band| {
+        let positions = band.members.iter().map(|m| m.position_ev);
+        (positions.chain([band.maximum_ev])).any(|p| (p - other.energy_ev).abs() < SAME_LINE_EV)
+    });
+    match inside && !hidden && !shown {
+        true => expected / faintest,
+        false => 0.0,
+    }
 }
 
 /// Whether a band reaches over `energy_ev`.

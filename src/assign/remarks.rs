@@ -1,7 +1,7 @@
 //! What the one-electron picture does not explain, in words.
 
 use super::decode;
-use super::foreign::{Cause, Surroundings, Suspect, covers, ought_to_show};
+use super::foreign::{Cause, FOUND_FROM, Surroundings, Suspect, covers, ought_to_show};
 use super::likelihood::Comparison;
 use super::prior::scatter_below;
 use super::reading::Reading;
@@ -150,7 +150,10 @@ impl Outcome<'_> {
         let prior = self.comparison.prior;
         let absent: Vec<&str> = others()
             .filter(|l| l.shape == "line")
-            .filter(|l| ought_to_show(&self.reading.bands, &self.reading.data, at, prior, line, l))
+            .filter(|l| {
+                let (bands, data) = (&self.reading.bands, &self.reading.data);
+                ought_to_show(bands, data, at, prior, line, l) > FOUND_FROM
+            })
             .map(|l| l.line.as_str())
             .collect();
         if !seen.is_empty() {

@@ -166,7 +166,12 @@ pub struct SimulateArguments {
     #[arg(long, value_name = "EV", default_value_t = 0.3)]
     pub resolution: f64,
     /// Added to every computed ionization energy, eV
-    #[arg(long, value_name = "EV", default_value_t = 0.0, allow_hyphen_values = true)]
+    #[arg(
+        long,
+        value_name = "EV",
+        default_value_t = 0.0,
+        allow_hyphen_values = true
+    )]
     pub shift: f64,
     /// Every computed ionization energy is multiplied by this before the shift
     #[arg(long, value_name = "FACTOR", default_value_t = 1.0)]

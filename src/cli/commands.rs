@@ -23,7 +23,12 @@ pub(super) fn assign(a: AssignArguments) -> Result<(), StudyError> {
         source,
     })?;
     let source = a.study.display().to_string();
-    let overrides = [compute_overrides(&a.compute), read_overrides(&a.read), a.set].concat();
+    let overrides = [
+        compute_overrides(&a.compute),
+        read_overrides(&a.read),
+        a.set,
+    ]
+    .concat();
     let request = StudyRequest::layered(&text, &source, &overrides)?;
     let mut settings = Settings::resolve(request, &a.study)?;
     if let Some(folder) = a.into {
@@ -111,8 +116,7 @@ pub(super) fn trace(a: TraceArguments) -> Result<(), StudyError> {
     print(&report::trace_summary(&trace));
     if let Some(path) = a.write {
         let mut text = Vec::new();
-        crate::trace::write_delimited(&trace, &mut text)
-            .expect("writing to memory does not fail");
+        crate::trace::write_delimited(&trace, &mut text).expect("writing to memory does not fail");
         report::put_in_place(&path, &text)?;
         print(&format!("\nWrote\n  {}\n", path.display()));
     }
@@ -155,10 +159,18 @@ fn flags_only(overrides: &[String]) -> Result<StudyRequest, StudyError> {
 fn theory(compute: &ComputeArguments, molecule: PathBuf) -> Result<TheorySettings, StudyError> {
     let mut request = flags_only(&compute_overrides(compute))?;
     request.molecule.geometry = Some(molecule);
-    TheorySettings::resolve(&request.molecule, &request.level, Path::new(""), COMMAND_LINE)
+    TheorySettings::resolve(
+        &request.molecule,
+        &request.level,
+        Path::new(""),
+        COMMAND_LINE,
+    )
 }
 
-fn measured(overrides: &[String], file: PathBuf) -> Result<(TraceSettings, FitOptions), StudyError> {
+fn measured(
+    overrides: &[String],
+    file: PathBuf,
+) -> Result<(TraceSettings, FitOptions), StudyError> {
     let mut request = flags_only(overrides)?;
     request.trace.file = Some(file);
     let trace = TraceSettings::resolve(&request.trace, Path::new(""), COMMAND_LINE)?;
@@ -189,9 +201,10 @@ fn read_overrides(read: &ReadArguments) -> Vec<String> {
             crate::trace::Choice::Name(name) => toml::Value::from(name.as_str()).to_string(),
         })
     };
-    let axis = read.axis.map(|a| toml::Value::from(AxisName::name(a)).to_string());
-    let window = (read.window.as_ref())
-        .map(|w| toml::Value::from(w.clone()).to_string());
+    let axis = read
+        .axis
+        .map(|a| toml::Value::from(AxisName::name(a)).to_string());
+    let window = (read.window.as_ref()).map(|w| toml::Value::from(w.clone()).to_string());
     [
         key("choice", choice(&read.choice)),
         key("axis", axis),

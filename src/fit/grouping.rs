@@ -31,6 +31,11 @@ const LN_WIDTH_DENSITY: f64 = 0.35;
 /// Probability that a band's shape takes one more component.
 const COMPONENT: f64 = 0.5;
 
+/// Separation of a component from its shape's strongest line, in widths, up to which it counts as
+/// near, and the scatter beyond.
+const ONE_SHAPE: f64 = 1.0;
+const ONE_SHAPE_SLACK: f64 = 0.25;
+
 /// Probability that a resolved progression stands on a floor of its own that is not resolved, and
 /// how much broader than a member such a floor is at least.
 const PEDESTAL: f64 = 0.5;
@@ -206,11 +211,20 @@ fn as_component(group: &Group, line: &LineView, lines: &[LineView]) -> Option<(u
             let width = ln_normal(ln_width, 0.0, 0.6);
             // Steep towards low energy: the weaker component on the high side.
             let side: f64 = if ln_area < 0.0 { 1.4 } else { 0.6 };
-            let density = COMPONENT.ln() + position + area + width + side.ln();
+            let density =
+                COMPONENT.ln() + position + area + width + side.ln() + reach(line, member);
             best = Some((apart, m, density));
         }
     }
     best.map(|(_, m, density)| (m, density))
+}
+
+/// Log weight of how far a component stands from the strongest line of the shape that it mends:
+/// one skewed shape does not reach over several widths, though a chain of components might.
+fn reach(line: &LineView, member: &Member) -> f64 {
+    let strongest = &member.view;
+    let apart = (line.position - strongest.position).abs() / line.width.max(strongest.width);
+    -0.5 * ((apart - ONE_SHAPE).max(0.0) / ONE_SHAPE_SLACK).powi(2)
 }
 
 /// Log probability that a band shows no further member.

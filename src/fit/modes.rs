@@ -15,6 +15,10 @@ const ONE_MORE_MODE: [f64; MODES] = [0.5, 0.25, 0.15];
 /// Relative scatter of a spacing from one member to the next (anharmonicity included).
 const SPACING_SCATTER: f64 = 0.03;
 
+/// Lines broader than this are seldom single vibrational members: by e for each further scale, eV.
+const BLURRED_EV: f64 = 0.15;
+const BLURRED_SCALE_EV: f64 = 0.05;
+
 /// Scatter of ln(intensity ratio) about Poisson's law.
 const RATIO_SCATTER: f64 = 0.6;
 
@@ -173,7 +177,8 @@ impl Progression {
         if !resolved {
             return ways;
         }
-        let width = self.width_density(line);
+        let width =
+            self.width_density(line) - (line.width - BLURRED_EV).max(0.0) / BLURRED_SCALE_EV;
         for place in self.free_places() {
             let (Some((position, variance)), Some((ln_area, scatter))) =
                 (self.predicted(place), self.expected_ln_area(place))

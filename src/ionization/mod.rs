@@ -145,9 +145,6 @@ mod tests {
         )
         .unwrap();
         let labels: Vec<&str> = lines.iter().map(|l| l.label.as_str()).collect();
-        assert_eq!(
-            labels,
-            ["n0 α", "n0 β", "n1 α", "n1 β"]
-        );
+        assert_eq!(labels, ["n0 α", "n0 β", "n1 α", "n1 β"]);
     }
 }

@@ -21,9 +21,7 @@ pub enum GeometryError {
         reason: String,
     },
     /// The bytes are not UTF-8.
-    #[error(
-        "{file}:{line}: found bytes that are not UTF-8 text; expected a plain-text XYZ file"
-    )]
+    #[error("{file}:{line}: found bytes that are not UTF-8 text; expected a plain-text XYZ file")]
     NotText {
         /// File as the user gave it.
         file: String,
@@ -83,9 +81,7 @@ pub enum GeometryError {
         expected: usize,
     },
     /// An atom line with fewer or more than four columns.
-    #[error(
-        "{file}:{line}: found {found} column(s) in '{text}'; expected 4: element, x, y, z (Å)"
-    )]
+    #[error("{file}:{line}: found {found} column(s) in '{text}'; expected 4: element, x, y, z (Å)")]
     WrongColumns {
         /// File as the user gave it.
         file: String,

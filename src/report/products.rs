@@ -45,12 +45,19 @@ pub fn write_prediction(
     let rows = (curve.energy_ev.iter())
         .zip(&curve.intensity)
         .map(|(energy, intensity)| [energy.to_string(), intensity.to_string()]);
-    let table = csv_text("predicted.csv", &["ionization_energy_ev", "intensity_per_ev"], rows)?;
+    let table = csv_text(
+        "predicted.csv",
+        &["ionization_energy_ev", "intensity_per_ev"],
+        rows,
+    )?;
     let mut outputs = vec![
         ("levels.json", json("levels.json", levels)?),
         ("predicted.csv", table),
     ];
-    outputs.extend(drawings(&figure, ["predicted.svg", "predicted.png", "predicted.pdf"])?);
+    outputs.extend(drawings(
+        &figure,
+        ["predicted.svg", "predicted.png", "predicted.pdf"],
+    )?);
     write_files(folder, outputs)
 }
 
@@ -79,7 +86,11 @@ pub fn trace_summary(trace: &Trace) -> String {
     let narrowest = steps().fold(f64::INFINITY, f64::min);
     let widest = steps().fold(0.0, f64::max);
     lines.push(format!("  steps {narrowest:.5} to {widest:.5} eV"));
-    let largest = trace.counts.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+    let largest = trace
+        .counts
+        .iter()
+        .copied()
+        .fold(f64::NEG_INFINITY, f64::max);
     lines.push(format!(
         "  counts: total {:.0}, largest {largest:.0}",
         trace.total_counts()
@@ -89,7 +100,12 @@ pub fn trace_summary(trace: &Trace) -> String {
         Noise::Stated => "  standard deviations: stated in the file".to_owned(),
     });
     lines.extend(trace.notes.iter().map(|note| format!("  note: {note}")));
-    lines.extend(trace.comments.iter().map(|comment| format!("  # {comment}")));
+    lines.extend(
+        trace
+            .comments
+            .iter()
+            .map(|comment| format!("  # {comment}")),
+    );
     lines.join("\n") + "\n"
 }
 
@@ -150,9 +166,13 @@ fn csv_text<const N: usize>(
 ) -> Result<Vec<u8>, ReportError> {
     let failed = |reason: String| ReportError::Encoding { name, reason };
     let mut writer = csv::Writer::from_writer(Vec::new());
-    writer.write_record(header).map_err(|e| failed(e.to_string()))?;
+    writer
+        .write_record(header)
+        .map_err(|e| failed(e.to_string()))?;
     for row in rows {
-        writer.write_record(&row).map_err(|e| failed(e.to_string()))?;
+        writer
+            .write_record(&row)
+            .map_err(|e| failed(e.to_string()))?;
     }
     writer.into_inner().map_err(|e| failed(e.to_string()))
 }

@@ -14,11 +14,15 @@ pub fn study_text(geometry: &Path, molecule: &Molecule, file: &Path, trace: &Tra
     let [low, high] = trace.span_ev();
     let photon = match trace.photon_energy_ev {
         Some(energy) => format!("photon_energy_ev = {energy}"),
-        None => "# photon_energy_ev = 21.218         # He I α; needed to look for lamp satellites".to_owned(),
+        None => "# photon_energy_ev = 21.218         # He I α; needed to look for lamp satellites"
+            .to_owned(),
     };
     let axis = match trace.axis {
         Axis::Ionization | Axis::Kinetic | Axis::Wavenumber => {
-            format!("axis = {:?}                 # the others: {AXES}", trace.axis.name())
+            format!(
+                "axis = {:?}                 # the others: {AXES}",
+                trace.axis.name()
+            )
         }
         Axis::FlightTime {
             length_m,

@@ -3,10 +3,8 @@
 use super::settings::TheorySettings;
 use super::{Event, Observer, StudyError};
 use crate::basis::{Basis, BasisSet};
-use crate::levels::{
-    AtomLine, Level, Levels, Method, MoleculeSummary, SCHEMA, ScfSummary,
-};
 use crate::ionization::{self, Portrait};
+use crate::levels::{AtomLine, Level, Levels, Method, MoleculeSummary, SCHEMA, ScfSummary};
 use crate::molecule::Molecule;
 use crate::molecule::symmetry::{self, PointGroup};
 use crate::orbitals::irreps;

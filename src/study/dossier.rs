@@ -7,8 +7,7 @@ use crate::assign::Assignment;
 use crate::fit::Grouping;
 use crate::levels::{Levels, LineKind};
 use crate::report::{
-    AssignmentSummary, BandCurve, Dossier, FitSummary, Overlay, OverlayStick, SCHEMA,
-    TraceSummary,
+    AssignmentSummary, BandCurve, Dossier, FitSummary, Overlay, OverlayStick, SCHEMA, TraceSummary,
 };
 use crate::trace::Axis;
 

@@ -176,7 +176,9 @@ impl TryFrom<f64> for Positive {
         if value.is_finite() && value > 0.0 {
             Ok(Self(value))
         } else {
-            Err(format!("found {value}, expected a finite number above zero"))
+            Err(format!(
+                "found {value}, expected a finite number above zero"
+            ))
         }
     }
 }

@@ -76,12 +76,8 @@ impl Settings {
         let source_name = study.display().to_string();
         let base = study.parent().unwrap_or(Path::new("")).to_owned();
         let trace = TraceSettings::resolve(&request.trace, &base, &source_name)?;
-        let theory = TheorySettings::resolve(
-            &request.molecule,
-            &request.level,
-            &base,
-            &source_name,
-        )?;
+        let theory =
+            TheorySettings::resolve(&request.molecule, &request.level, &base, &source_name)?;
         let stem = study.file_stem().unwrap_or_default().to_string_lossy();
         let folder = match request.output.folder {
             Some(folder) => base.join(folder),
@@ -160,8 +156,8 @@ impl TraceSettings {
             key,
             expected,
         };
-        let file = (request.file.clone())
-            .ok_or_else(|| missing("trace.file", "the measured file"))?;
+        let file =
+            (request.file.clone()).ok_or_else(|| missing("trace.file", "the measured file"))?;
         let axis = match request.axis {
             None => None,
             Some(AxisName::Ionization) => Some(Axis::Ionization),

@@ -4,7 +4,7 @@ use super::settings::TheorySettings;
 use super::{Observer, StudyError, compute};
 use crate::levels::{HoleState, Levels};
 use crate::predict::{Instrument, PredictedTrace, predict};
-use crate::report::{self, Overlay, OverlayStick, PredictedCurve, Heading};
+use crate::report::{self, Heading, Overlay, OverlayStick, PredictedCurve};
 use std::path::{Path, PathBuf};
 
 /// Settings of `simulate`.
@@ -79,7 +79,9 @@ impl Simulation {
             }),
             ..Overlay::default()
         };
-        Ok(report::write_prediction(&heading, &overlay, levels, folder)?)
+        Ok(report::write_prediction(
+            &heading, &overlay, levels, folder,
+        )?)
     }
 }
 
@@ -98,7 +100,11 @@ pub fn run(settings: &SimulateSettings, observer: Observer) -> Result<Simulation
     let levels = compute::levels(&settings.theory, observer)?;
     let shown = |state: &HoleState| settings.scale * state.ionization_energy_ev + settings.shift_ev;
     let states: Vec<HoleState> = (levels.hole_states.iter())
-        .filter(|s| settings.photon_energy_ev.is_none_or(|limit| shown(s) < limit))
+        .filter(|s| {
+            settings
+                .photon_energy_ev
+                .is_none_or(|limit| shown(s) < limit)
+        })
         .cloned()
         .collect();
     if states.is_empty() {
@@ -107,7 +113,11 @@ pub fn run(settings: &SimulateSettings, observer: Observer) -> Result<Simulation
             problem: format!(
                 "no state can be ionized below {} eV; the lowest computed one lies at {:.2} eV",
                 settings.photon_energy_ev.unwrap_or_default(),
-                levels.hole_states.iter().map(shown).fold(f64::INFINITY, f64::min)
+                levels
+                    .hole_states
+                    .iter()
+                    .map(shown)
+                    .fold(f64::INFINITY, f64::min)
             ),
         });
     }

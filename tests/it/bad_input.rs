@@ -37,7 +37,10 @@ fn refused(name: &str, files: &[(&str, &[u8])], arguments: &[&str], expected: &s
     let message = String::from_utf8_lossy(&output.stderr);
     assert_eq!(output.status.code(), Some(2), "{name}: {message}");
     assert!(message.starts_with("error: "), "{name}: {message}");
-    assert!(message.contains(expected), "{name}: expected '{expected}' in: {message}");
+    assert!(
+        message.contains(expected),
+        "{name}: expected '{expected}' in: {message}"
+    );
     assert!(!message.contains("panicked"), "{name}: {message}");
     let left = fs::read_dir(folder.path()).unwrap().count();
     assert_eq!(left, files.len(), "{name}: something was written");
@@ -51,16 +54,36 @@ fn malformed_geometries_are_refused_with_their_line() {
         ("no count", b"water\n\nO 0 0 0\n", "m.xyz:1: found 'water'"),
         ("count zero", b"0\n\n", "m.xyz:1: found '0'"),
         ("negative count", b"-3\n\nO 0 0 0\n", "m.xyz:1: found '-3'"),
-        ("fractional count", b"1.5\n\nO 0 0 0\n", "m.xyz:1: found '1.5'"),
-        ("too few atoms", b"3\n\nO 0 0 0\nH 0 0 1\n", "after 2 atom(s); line 1 promises 3"),
+        (
+            "fractional count",
+            b"1.5\n\nO 0 0 0\n",
+            "m.xyz:1: found '1.5'",
+        ),
+        (
+            "too few atoms",
+            b"3\n\nO 0 0 0\nH 0 0 1\n",
+            "after 2 atom(s); line 1 promises 3",
+        ),
         ("too many atoms", b"1\n\nHe 0 0 0\nHe 0 0 3\n", "m.xyz:4: "),
         ("unknown element", b"1\n\nXq 0 0 0\n", "m.xyz:3: found 'Xq'"),
         ("element out of reach", b"1\n\nU 0 0 0\n", "m.xyz:3: "),
-        ("not a number", b"1\n\nHe 0 zero 0\n", "m.xyz:3: found 'zero'"),
-        ("decimal comma", b"1\n\nHe 0 0,5 0\n", "m.xyz:3: found '0,5'"),
+        (
+            "not a number",
+            b"1\n\nHe 0 zero 0\n",
+            "m.xyz:3: found 'zero'",
+        ),
+        (
+            "decimal comma",
+            b"1\n\nHe 0 0,5 0\n",
+            "m.xyz:3: found '0,5'",
+        ),
         ("NaN", b"1\n\nHe 0 NaN 0\n", "m.xyz:3: found 'NaN'"),
         ("infinity", b"1\n\nHe inf 0 0\n", "m.xyz:3: found 'inf'"),
-        ("missing column", b"1\n\nHe 0 0\n", "m.xyz:3: found 3 column(s)"),
+        (
+            "missing column",
+            b"1\n\nHe 0 0\n",
+            "m.xyz:3: found 3 column(s)",
+        ),
         ("atoms too close", b"2\n\nH 0 0 0\nH 0 0 0.1\n", "m.xyz:4: "),
         ("not text", b"1\n\nHe 0 0 \xff\n", "m.xyz:3: "),
         ("open shell", b"1\n\nH 0 0 0\n", "open shell"),
@@ -71,13 +94,41 @@ fn malformed_geometries_are_refused_with_their_line() {
     let water = ("m.xyz", GOOD_XYZ.as_bytes());
     let more: &[(&str, &[&str], &str)] = &[
         ("missing file", &["levels", "n.xyz"], "n.xyz"),
-        ("multiplicity", &["levels", "m.xyz", "--multiplicity", "2"], "multiplicity 2"),
-        ("charge", &["levels", "m.xyz", "--charge", "10"], "charge 10"),
-        ("basis", &["levels", "m.xyz", "--level", "koopmans/def2-tzpv"], "def2-tzvp"),
-        ("method", &["levels", "m.xyz", "--level", "kopmans/def2-svp"], "kopmans"),
-        ("level without basis", &["levels", "m.xyz", "--level", "koopmans"], "METHOD/BASIS"),
-        ("auxiliary", &["levels", "m.xyz", "--auxiliary", "nonesuch"], "nonesuch"),
-        ("resolution", &["simulate", "m.xyz", "--resolution", "0"], "--resolution"),
+        (
+            "multiplicity",
+            &["levels", "m.xyz", "--multiplicity", "2"],
+            "multiplicity 2",
+        ),
+        (
+            "charge",
+            &["levels", "m.xyz", "--charge", "10"],
+            "charge 10",
+        ),
+        (
+            "basis",
+            &["levels", "m.xyz", "--level", "koopmans/def2-tzpv"],
+            "def2-tzvp",
+        ),
+        (
+            "method",
+            &["levels", "m.xyz", "--level", "kopmans/def2-svp"],
+            "kopmans",
+        ),
+        (
+            "level without basis",
+            &["levels", "m.xyz", "--level", "koopmans"],
+            "METHOD/BASIS",
+        ),
+        (
+            "auxiliary",
+            &["levels", "m.xyz", "--auxiliary", "nonesuch"],
+            "nonesuch",
+        ),
+        (
+            "resolution",
+            &["simulate", "m.xyz", "--resolution", "0"],
+            "--resolution",
+        ),
     ];
     for (name, arguments, expected) in more {
         refused(name, &[water], arguments, expected);
@@ -91,21 +142,77 @@ fn malformed_studies_are_refused_with_line_and_column() {
     let cases: &[(&str, String, &str)] = &[
         ("not TOML", "[molecule\n".into(), "s.toml:1:"),
         ("empty study", String::new(), "s.toml: found no trace.file"),
-        ("no geometry", trace.into(), "s.toml: found no molecule.geometry"),
+        (
+            "no geometry",
+            trace.into(),
+            "s.toml: found no molecule.geometry",
+        ),
         ("no trace", head.into(), "s.toml: found no trace.file"),
-        ("unknown section", format!("{head}{trace}[tracee]\n"), "s.toml:5:2: unknown field `tracee`"),
-        ("unknown key", format!("{head}{trace}photon_energy = 21\n"), "s.toml:5:1: unknown field"),
-        ("text for number", format!("{head}charge = 'one'\n"), "s.toml:3:10: "),
-        ("fraction for charge", format!("{head}charge = 0.5\n"), "s.toml:3:10: "),
-        ("negative multiplicity", format!("{head}multiplicity = -1\n"), "s.toml:3:16: "),
-        ("key twice", format!("{head}geometry = 'n.xyz'\n"), "s.toml:3:1: duplicate key"),
-        ("window turned", format!("{head}{trace}window_ev = [14, 12]\n"), "s.toml:5:13: found [14, 12]"),
-        ("window of three", format!("{head}{trace}window_ev = [1, 2, 3]\n"), "s.toml:5:13: "),
-        ("photon energy zero", format!("{head}{trace}photon_energy_ev = 0\n"), "s.toml:5:20: "),
-        ("photon energy nan", format!("{head}{trace}photon_energy_ev = nan\n"), "s.toml:5:20: "),
-        ("axis word", format!("{head}{trace}axis = 'binding'\n"), "s.toml:5:8: unknown variant `binding`"),
-        ("level word", format!("{head}[level]\nlevel = 'dft/def2-svp'\n"), "s.toml:4:9: unknown method 'dft'"),
-        ("direction word", format!("{head}[output]\ndirection = 'left'\n"), "s.toml:4:13: "),
+        (
+            "unknown section",
+            format!("{head}{trace}[tracee]\n"),
+            "s.toml:5:2: unknown field `tracee`",
+        ),
+        (
+            "unknown key",
+            format!("{head}{trace}photon_energy = 21\n"),
+            "s.toml:5:1: unknown field",
+        ),
+        (
+            "text for number",
+            format!("{head}charge = 'one'\n"),
+            "s.toml:3:10: ",
+        ),
+        (
+            "fraction for charge",
+            format!("{head}charge = 0.5\n"),
+            "s.toml:3:10: ",
+        ),
+        (
+            "negative multiplicity",
+            format!("{head}multiplicity = -1\n"),
+            "s.toml:3:16: ",
+        ),
+        (
+            "key twice",
+            format!("{head}geometry = 'n.xyz'\n"),
+            "s.toml:3:1: duplicate key",
+        ),
+        (
+            "window turned",
+            format!("{head}{trace}window_ev = [14, 12]\n"),
+            "s.toml:5:13: found [14, 12]",
+        ),
+        (
+            "window of three",
+            format!("{head}{trace}window_ev = [1, 2, 3]\n"),
+            "s.toml:5:13: ",
+        ),
+        (
+            "photon energy zero",
+            format!("{head}{trace}photon_energy_ev = 0\n"),
+            "s.toml:5:20: ",
+        ),
+        (
+            "photon energy nan",
+            format!("{head}{trace}photon_energy_ev = nan\n"),
+            "s.toml:5:20: ",
+        ),
+        (
+            "axis word",
+            format!("{head}{trace}axis = 'binding'\n"),
+            "s.toml:5:8: unknown variant `binding`",
+        ),
+        (
+            "level word",
+            format!("{head}[level]\nlevel = 'dft/def2-svp'\n"),
+            "s.toml:4:9: unknown method 'dft'",
+        ),
+        (
+            "direction word",
+            format!("{head}[output]\ndirection = 'left'\n"),
+            "s.toml:4:13: ",
+        ),
         (
             "flight time uncalibrated",
             format!("{head}{trace}axis = 'flight-time'\nphoton_energy_ev = 21.2\n"),
@@ -153,10 +260,26 @@ fn malformed_studies_are_refused_with_line_and_column() {
     ];
     let overrides: &[(&str, &[&str], &str)] = &[
         ("missing study", &["assign", "r.toml"], "r.toml"),
-        ("override of nothing", &["assign", "s.toml", "--set", "trace.windw=[1,2]"], "windw"),
-        ("override turned", &["assign", "s.toml", "--set", "trace.window_ev=[9,8]"], "[9, 8]"),
-        ("flag turned", &["assign", "s.toml", "--window", "15", "12"], "[15, 12]"),
-        ("begin again", &["begin", "m.xyz", "t.csv", "--study", "s.toml"], "--overwrite"),
+        (
+            "override of nothing",
+            &["assign", "s.toml", "--set", "trace.windw=[1,2]"],
+            "windw",
+        ),
+        (
+            "override turned",
+            &["assign", "s.toml", "--set", "trace.window_ev=[9,8]"],
+            "[9, 8]",
+        ),
+        (
+            "flag turned",
+            &["assign", "s.toml", "--window", "15", "12"],
+            "[15, 12]",
+        ),
+        (
+            "begin again",
+            &["begin", "m.xyz", "t.csv", "--study", "s.toml"],
+            "--overwrite",
+        ),
     ];
     for (name, arguments, expected) in overrides {
         refused(name, &files, arguments, expected);
@@ -166,7 +289,10 @@ fn malformed_studies_are_refused_with_line_and_column() {
 #[test]
 fn malformed_traces_are_refused_with_line_and_column() {
     let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/traces/bad");
-    let list: toml::Table = fs::read_to_string(folder.join("cases.toml")).unwrap().parse().unwrap();
+    let list: toml::Table = fs::read_to_string(folder.join("cases.toml"))
+        .unwrap()
+        .parse()
+        .unwrap();
     let mut run = 0;
     for case in list["case"].as_array().unwrap() {
         if case.get("options").is_some() {

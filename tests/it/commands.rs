@@ -28,9 +28,21 @@ fn printed(folder: &Path, arguments: &[&str]) -> String {
 fn levels_follow_the_schema_in_any_number_of_threads() {
     let folder = tempfile::tempdir().unwrap();
     let geometry = demo("hydrogen-sulfide/hydrogen-sulfide.xyz");
-    let arguments = ["levels", &geometry, "--level", "koopmans/def2-svp", "--json"];
-    let one = printed(folder.path(), &[&arguments[..], &["--threads", "1"]].concat());
-    let two = printed(folder.path(), &[&arguments[..], &["--threads", "2"]].concat());
+    let arguments = [
+        "levels",
+        &geometry,
+        "--level",
+        "koopmans/def2-svp",
+        "--json",
+    ];
+    let one = printed(
+        folder.path(),
+        &[&arguments[..], &["--threads", "1"]].concat(),
+    );
+    let two = printed(
+        folder.path(),
+        &[&arguments[..], &["--threads", "2"]].concat(),
+    );
     assert_eq!(one, two);
     let json: serde_json::Value = serde_json::from_str(&one).unwrap();
     assert_eq!(json["schema"], "bandproof/levels/1");
@@ -51,9 +63,16 @@ fn levels_follow_the_schema_in_any_number_of_threads() {
 fn a_study_can_be_begun_and_run() {
     let folder = tempfile::tempdir().unwrap();
     for file in ["formaldehyde.xyz", "formaldehyde.csv"] {
-        fs::copy(demo(&format!("formaldehyde/{file}")), folder.path().join(file)).unwrap();
+        fs::copy(
+            demo(&format!("formaldehyde/{file}")),
+            folder.path().join(file),
+        )
+        .unwrap();
     }
-    printed(folder.path(), &["begin", "formaldehyde.xyz", "formaldehyde.csv"]);
+    printed(
+        folder.path(),
+        &["begin", "formaldehyde.xyz", "formaldehyde.csv"],
+    );
     let small = ["--level", "koopmans/def2-svp", "--photon-energy", "21.218"];
     let run = [&["assign", "formaldehyde.toml"], &small[..]].concat();
     let output = printed(folder.path(), &run);
@@ -77,10 +96,17 @@ fn a_study_can_be_begun_and_run() {
     assert_eq!(json["study"]["trace"]["read"]["photon_energy_ev"], 21.218);
 
     // The same study gives the same bytes, whatever the number of threads.
-    printed(folder.path(), &[&run[..], &["--threads", "1", "--into", "again"]].concat());
+    printed(
+        folder.path(),
+        &[&run[..], &["--threads", "1", "--into", "again"]].concat(),
+    );
     for name in ["dossier.json", "overlay.svg", "assignment.md"] {
         let bytes = |folder: &Path| fs::read(folder.join(name)).unwrap();
-        assert_eq!(bytes(&written), bytes(&folder.path().join("again")), "{name}");
+        assert_eq!(
+            bytes(&written),
+            bytes(&folder.path().join("again")),
+            "{name}"
+        );
     }
 }
 
@@ -104,7 +130,8 @@ fn bands_need_no_molecule() {
     let folder = tempfile::tempdir().unwrap();
     let trace = demo("hydrogen-sulfide/hydrogen-sulfide.csv");
     let text = printed(folder.path(), &["bands", &trace, "--into", "out", "--json"]);
-    let json: serde_json::Value = serde_json::from_str(text.split("\nWrote").next().unwrap()).unwrap();
+    let json: serde_json::Value =
+        serde_json::from_str(text.split("\nWrote").next().unwrap()).unwrap();
     assert!(json["groupings"][0]["bands"].as_array().unwrap().len() >= 3);
     assert!(folder.path().join("out").read_dir().unwrap().count() >= 3);
 }
@@ -113,17 +140,38 @@ fn bands_need_no_molecule() {
 fn a_simulation_writes_its_figure() {
     let folder = tempfile::tempdir().unwrap();
     let geometry = demo("formaldehyde/formaldehyde.xyz");
-    let small = ["--level", "koopmans/def2-svp", "--into", "out", "--photon-energy", "21.2"];
-    printed(folder.path(), &[&["simulate", &geometry], &small[..]].concat());
+    let small = [
+        "--level",
+        "koopmans/def2-svp",
+        "--into",
+        "out",
+        "--photon-energy",
+        "21.2",
+    ];
+    printed(
+        folder.path(),
+        &[&["simulate", &geometry], &small[..]].concat(),
+    );
     assert!(folder.path().join("out").read_dir().unwrap().count() >= 3);
 }
 
 #[test]
 fn an_output_that_cannot_be_written_is_exit_code_4() {
     let folder = tempfile::tempdir().unwrap();
-    fs::write(folder.path().join("taken"), "a file where a folder should be").unwrap();
+    fs::write(
+        folder.path().join("taken"),
+        "a file where a folder should be",
+    )
+    .unwrap();
     let geometry = demo("formaldehyde/formaldehyde.xyz");
-    let arguments = ["simulate", &geometry, "--level", "koopmans/sto-3g", "--into", "taken"];
+    let arguments = [
+        "simulate",
+        &geometry,
+        "--level",
+        "koopmans/sto-3g",
+        "--into",
+        "taken",
+    ];
     let output = bandproof(folder.path(), &arguments);
     assert_eq!(output.status.code(), Some(4));
     let kept = fs::read_to_string(folder.path().join("taken")).unwrap();

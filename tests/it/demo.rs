@@ -3,6 +3,8 @@
 
 #[path = "../../spectra-demo/model.rs"]
 mod model;
+#[path = "demo/outcome.rs"]
+mod outcome;
 
 use model::Scenario;
 use std::path::{Path, PathBuf};

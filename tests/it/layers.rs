@@ -121,22 +121,33 @@ fn modules_import_only_from_lower_layers() {
             }
         }
     }
-    assert!(wrong.is_empty(), "upward or sideways:\n{}", wrong.join("\n"));
+    assert!(
+        wrong.is_empty(),
+        "upward or sideways:\n{}",
+        wrong.join("\n")
+    );
 }
 
 #[test]
 fn import_reader_sees_braces() {
-    let code = "use crate::{fit::{Band, Grouping}, levels, trace::Trace};\nlet x = crate::units::EV;";
+    let code =
+        "use crate::{fit::{Band, Grouping}, levels, trace::Trace};\nlet x = crate::units::EV;";
     assert_eq!(crate_paths(code), ["fit", "levels", "trace", "units"]);
 }
 
 #[test]
 fn conversion_factors_live_in_units() {
-    let factors = ["27.2113", "0.529177", "1.88972", "2.54174", "1.23984", "8065.5", "219474"];
+    let factors = [
+        "27.2113", "0.529177", "1.88972", "2.54174", "1.23984", "8065.5", "219474",
+    ];
     for (module, path, text) in sources() {
         let bare = code(&text).replace('_', "");
         for factor in factors.iter().filter(|f| bare.contains(**f)) {
-            assert!(module == "units", "{}: conversion factor {factor}", path.display());
+            assert!(
+                module == "units",
+                "{}: conversion factor {factor}",
+                path.display()
+            );
         }
     }
 }
@@ -146,11 +157,17 @@ fn only_some_modules_touch_files_and_one_prints() {
     let may_touch_files = ["trace", "molecule", "report", "study", "cli"];
     for (module, path, text) in sources() {
         let code = code(&text);
-        if ["std::fs", "File::", "fs::"].iter().any(|w| code.contains(w)) {
+        if ["std::fs", "File::", "fs::"]
+            .iter()
+            .any(|w| code.contains(w))
+        {
             let allowed = may_touch_files.contains(&module.as_str());
             assert!(allowed, "{} touches the file system", path.display());
         }
-        if ["println!", "print!(", "eprint!(", "dbg!("].iter().any(|w| code.contains(w)) {
+        if ["println!", "print!(", "eprint!(", "dbg!("]
+            .iter()
+            .any(|w| code.contains(w))
+        {
             assert!(module == "cli", "{} prints", path.display());
         }
     }
@@ -158,7 +175,14 @@ fn only_some_modules_touch_files_and_one_prints() {
 
 #[test]
 fn theory_and_measurement_do_not_meet_below_the_matcher() {
-    let theory = ["molecule", "basis", "integrals", "scf", "orbitals", "ionization"];
+    let theory = [
+        "molecule",
+        "basis",
+        "integrals",
+        "scf",
+        "orbitals",
+        "ionization",
+    ];
     let measured = ["trace", "lineshape", "fit"];
     for (module, path, text) in sources() {
         let uses = crate_paths(&code(&text));

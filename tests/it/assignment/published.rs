@@ -159,6 +159,7 @@ pub fn band(vertical: f64, area: f64, fwhm: f64) -> Band {
         fwhm_ev: fwhm,
         spacing_ev: None,
         significance: 300.0,
+        peaks: vec![0],
         members: vec![Member {
             peak: 0,
             position_ev: vertical,
