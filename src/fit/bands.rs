@@ -4,7 +4,7 @@ use super::build::{Builder, sort};
 use super::channels::Channels;
 use super::describe::{Fitted, groupings};
 use super::model::{Line, Model, PER_LINE, Parameters, Selection};
-use super::solver::{Covariance, Solution, SolverOptions, StopReason, minimize};
+use super::solver::{Covariance, Objective, Solution, SolverOptions, StopReason, minimize};
 use super::{BandFit, CorrelatedPair, FitError, FitOptions, FitStatistics, FitStep, Peak, Stage};
 use crate::numeric::statistics::runs_test;
 use crate::trace::Trace;
@@ -140,6 +140,10 @@ fn check(options: &FitOptions) -> Result<(), FitError> {
     Ok(())
 }
 
+/// χ² counts as settled when a step promises and brings less than this: all parameters are then
+/// within a hundredth of a standard deviation of the minimum, along whatever valley the data leave.
+const SETTLED_CHI_SQUARED: f64 = 1e-4;
+
 /// Fits everything until nothing moves, without lines that shrink to nothing on the way.
 fn converge(
     builder: &Builder,
@@ -150,12 +154,11 @@ fn converge(
     for _ in 0..12 {
         let selection = Selection::all(&parameters, data);
         let model = Model::new(data, &parameters, selection);
+        let start = model.vector();
         let options = SolverOptions {
-            max_iterations: 400,
-            value_tolerance: 1e-9,
+            value_tolerance: SETTLED_CHI_SQUARED / (1.0 + model.value(&start)),
             ..SolverOptions::default()
         };
-        let start = model.vector();
         let solution = minimize(&model, &start, &model.bounds(builder.narrowest), &options)?;
         let next = model.with(&solution.parameters);
         let settled = (last - solution.value).abs() < 1e-6 * (1.0 + solution.value.abs());

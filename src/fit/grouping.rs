@@ -41,8 +41,17 @@ const ONE_SHAPE_SLACK: f64 = 0.25;
 const PEDESTAL: f64 = 0.5;
 const BROADER: f64 = 1.5;
 
+/// Probability that a band has a weak line that only sums up part of its envelope, and the largest
+/// share of the band's area that such a line has.
+const WING: f64 = 0.5;
+const WING_SHARE: f64 = 0.08;
+
+/// Foreign lines per eV, and the scatter of ln(area) among a molecule's ionizations.
+const FOREIGN_PER_EV: f64 = 0.15;
+const STRENGTH_SCATTER: f64 = 0.9;
+
 /// How far beyond the last resolved member blurred ones are looked for, eV.
-const BEYOND: f64 = 0.3;
+const BEYOND: f64 = 0.4;
 
 /// Probability that a band shows one member only.
 const SINGLE: f64 = 0.5;
@@ -105,15 +114,12 @@ pub(super) fn readings(
             reading.score += ended(group, lines, visible);
         }
     }
-    let mut from = 0;
-    while from < beam.len() {
-        // Readings that arise are looked at in their turn: two pedestals may join.
-        let more: Vec<Reading> = beam[from..]
-            .iter()
-            .flat_map(|r| with_pedestals(r, lines))
-            .collect();
-        from = beam.len();
-        beam.extend(more);
+    joined(&mut beam, |r| with_pedestals(r, lines));
+    beam.sort_by(|a, b| b.score.total_cmp(&a.score));
+    beam.truncate(BEAM);
+    joined(&mut beam, |r| with_wings(r, lines));
+    for reading in &mut beam {
+        reading.score += strengths(&reading.groups, lines);
     }
     // Different roles of the lines within the same bands are one reading.
     let mut distinct: Vec<(Vec<Vec<usize>>, Reading, Vec<f64>)> = Vec::new();
@@ -149,6 +155,36 @@ pub(super) fn readings(
             probability: (log - all).exp(),
         })
         .collect()
+}
+
+/// Adds the readings in which bands of others are joined; those that arise are looked at in their
+/// turn, since more than two may join.
+fn joined(beam: &mut Vec<Reading>, join: impl Fn(&Reading) -> Vec<Reading>) {
+    let mut from = 0;
+    while from < beam.len() {
+        let more: Vec<Reading> = beam[from..].iter().flat_map(&join).collect();
+        from = beam.len();
+        beam.extend(more);
+    }
+}
+
+/// Log weight of the bands' areas: ionizations are of like strength within a factor of a few;
+/// what is much weaker is foreign, and that is rarer. (Relative to the even density that every
+/// band got when it was begun.)
+fn strengths(groups: &[Group], lines: &[LineView]) -> f64 {
+    let areas: Vec<f64> = (groups.iter())
+        .map(|g| g.lines.iter().map(|&k| lines[k].area).sum())
+        .collect();
+    let squares: f64 = areas.iter().map(|a| a * a).sum();
+    let typical = (squares / areas.iter().sum::<f64>()).ln();
+    let even = (IONIZATIONS_PER_EV * LN_AREA_DENSITY).ln();
+    let weight = |area: &f64| {
+        log_sum_exp(&[
+            IONIZATIONS_PER_EV.ln() + ln_normal(area.ln(), typical, STRENGTH_SCATTER),
+            (FOREIGN_PER_EV * LN_AREA_DENSITY).ln(),
+        ]) - even
+    };
+    areas.iter().map(weight).sum()
 }
 
 /// All ways to give line `k` a place in a reading.
@@ -301,6 +337,45 @@ fn with_pedestals(reading: &Reading, lines: &[LineView]) -> Vec<Reading> {
             next.score += together - apart;
             merged.push(next);
         }
+    }
+    merged
+}
+
+/// Readings in which a weak line on a band or on its high-energy side is part of its envelope:
+/// combination members and the tail of a progression that one line sums up.
+fn with_wings(reading: &Reading, lines: &[LineView]) -> Vec<Reading> {
+    let mut merged = Vec::new();
+    for (q, wing) in reading.groups.iter().enumerate() {
+        let &[k] = &wing.lines[..] else { continue };
+        let line = &lines[k];
+        // The strongest band that the line may belong to.
+        let home = (reading.groups.iter().enumerate())
+            .filter(|(p, _)| *p != q)
+            .filter_map(|(p, group)| {
+                let whole = Extent::of(&group.lines, lines);
+                let ends = |f: fn(f64, f64) -> f64, from| {
+                    let positions = group.lines.iter().map(|&k| lines[k].position);
+                    positions.fold(from, f)
+                };
+                let (low, high) = (ends(f64::min, f64::MAX), ends(f64::max, f64::MIN) + BEYOND);
+                let sharpest = (group.lines.iter())
+                    .map(|&k| lines[k].width)
+                    .fold(f64::MAX, f64::min);
+                let fits = (low..=high).contains(&line.position)
+                    && line.area < WING_SHARE * whole.area
+                    && line.width > 0.7 * sharpest;
+                fits.then_some((p, whole.area, high - low))
+            })
+            .max_by(|a, b| a.1.total_cmp(&b.1));
+        let Some((p, _, range)) = home else { continue };
+        let together = WING.ln() - range.ln() + (LN_AREA_DENSITY * LN_WIDTH_DENSITY).ln();
+        let apart = (IONIZATIONS_PER_EV * LN_AREA_DENSITY * LN_WIDTH_DENSITY).ln() + SINGLE.ln();
+        let mut next = reading.clone();
+        next.groups[p].lines.push(k);
+        next.groups[p].lines.sort();
+        next.groups.remove(q);
+        next.score += together - apart;
+        merged.push(next);
     }
     merged
 }

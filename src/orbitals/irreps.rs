@@ -369,7 +369,7 @@ fn resolve(
         let eigen = SymmetricEigen::new(columns.transpose() * columns);
         let mut kept: Vec<usize> = (0..size).filter(|&k| eigen.eigenvalues[k] > 0.5).collect();
         kept.sort_by(|&a, &b| eigen.eigenvalues[b].total_cmp(&eigen.eigenvalues[a]));
-        if kept.len() % part.dimension != 0 {
+        if !kept.len().is_multiple_of(part.dimension) {
             return None;
         }
         if kept.is_empty() {

@@ -9,6 +9,8 @@
 //! Nothing is applied to the energies: work function and target bias, which belong to solids, are
 //! kept in the comments.
 
+use std::iter::Peekable;
+
 use thiserror::Error;
 
 use super::error::{Problem, TraceError, shorten};
@@ -54,39 +56,34 @@ pub(super) fn is(text: &str) -> bool {
 
 /// Reads every block.
 pub(super) fn read(text: &str, source: &str) -> Result<Vec<Record>, TraceError> {
-    let mut lines: Vec<(usize, &str)> = numbered_lines(text).collect();
-    while lines.last().is_some_and(|(_, line)| line.trim().is_empty()) {
-        lines.pop();
-    }
+    let text = text.trim_end();
+    let lines: Lines = Box::new(numbered_lines(text));
+    let total = numbered_lines(text).count();
     let mut cursor = Cursor {
-        lines: &lines,
-        at: 0,
+        lines: lines.peekable(),
+        line: 1,
+        total,
     };
     read_lines(&mut cursor)
-        .map_err(|problem| TraceError::line(source, cursor.line(), Problem::from(problem)))
+        .map_err(|problem| TraceError::line(source, cursor.line, Problem::from(problem)))
 }
 
-/// A place in the list of lines; what was read last is what errors point at.
+type Lines<'a> = Box<dyn Iterator<Item = (usize, &'a str)> + 'a>;
+
+/// A place in the list of lines.
 struct Cursor<'a> {
-    lines: &'a [(usize, &'a str)],
-    at: usize,
+    lines: Peekable<Lines<'a>>,
+    /// The line that was read last: errors point at it.
+    line: usize,
+    total: usize,
 }
 
 type Parsed<T> = Result<T, VamasProblem>;
 
 impl<'a> Cursor<'a> {
-    fn line(&self) -> usize {
-        let last = self.lines.len().saturating_sub(1);
-        let index = self.at.saturating_sub(1).min(last);
-        self.lines.get(index).map_or(1, |(line, _)| *line)
-    }
-
     fn text(&mut self, expected: &'static str) -> Parsed<&'a str> {
-        let (_, text) = self
-            .lines
-            .get(self.at)
-            .ok_or(VamasProblem::End { expected })?;
-        self.at += 1;
+        let (line, text) = self.lines.next().ok_or(VamasProblem::End { expected })?;
+        self.line = line;
         Ok(text.trim())
     }
 
@@ -120,7 +117,7 @@ impl<'a> Cursor<'a> {
     fn count(&mut self, expected: &'static str) -> Parsed<usize> {
         let found = self.whole(expected)?;
         match usize::try_from(found) {
-            Ok(count) if count <= self.lines.len() => Ok(count),
+            Ok(count) if count <= self.total => Ok(count),
             _ => Err(VamasProblem::Line {
                 found: found.to_string(),
                 expected,
@@ -162,7 +159,7 @@ fn read_lines(cursor: &mut Cursor) -> Parsed<Vec<Record>> {
     if records.is_empty() {
         return Err(VamasProblem::NoBlock);
     }
-    if cursor.at < cursor.lines.len() {
+    if cursor.lines.peek().is_some() {
         let found = cursor.text("end of experiment")?;
         if !found.eq_ignore_ascii_case("end of experiment") {
             let found = shorten(found);
@@ -308,12 +305,17 @@ fn read_block(cursor: &mut Cursor, head: &Head, first: Option<&Items>) -> Parsed
         if given(item) {
             let expected = "a number of the date (year, month, day, hours, minutes, seconds, zone)";
             let value = cursor.number(expected)?;
-            if item <= 6 && value >= 0.0 {
+            if item <= 6 && value > 0.0 {
                 moment.push(format!("{what} {value}"));
             }
         }
     }
-    keep(&mut comments, "measured", &moment.join(", "));
+    if moment
+        .first()
+        .is_some_and(|first| first.starts_with("year"))
+    {
+        keep(&mut comments, "measured", &moment.join(", "));
+    }
     if given(8) {
         items.comments.clear();
         for _ in 0..cursor.count("the number of lines in the block comment")? {
@@ -420,7 +422,7 @@ fn read_block(cursor: &mut Cursor, head: &Head, first: Option<&Items>) -> Parsed
     if given(31) && head.regular {
         let label = cursor.text("the abscissa label")?.to_string();
         let unit = cursor.text("the abscissa units")?.to_string();
-        items.abscissa_line = cursor.line();
+        items.abscissa_line = cursor.line;
         let start = cursor.number("the abscissa start")?;
         items.abscissa = (label, unit, start, cursor.number("the abscissa increment")?);
     }
@@ -431,7 +433,7 @@ fn read_block(cursor: &mut Cursor, head: &Head, first: Option<&Items>) -> Parsed
                 .text("the label of a corresponding variable")?
                 .to_string();
             if !head.regular && items.variables.is_empty() {
-                items.abscissa_line = cursor.line();
+                items.abscissa_line = cursor.line;
             }
             let unit = cursor
                 .text("the unit of a corresponding variable")?
@@ -509,10 +511,6 @@ fn read_ordinates(cursor: &mut Cursor, head: &Head, items: &Items) -> Parsed<Rec
             expected,
         });
     }
-    cursor.skip(
-        2 * width,
-        "the least and the greatest ordinate of each variable",
-    )?;
     if found % width != 0 {
         return Err(VamasProblem::Uneven {
             found,
@@ -522,6 +520,10 @@ fn read_ordinates(cursor: &mut Cursor, head: &Head, items: &Items) -> Parsed<Rec
     if !head.regular && width == 1 {
         return Err(VamasProblem::NoOrdinates);
     }
+    cursor.skip(
+        2 * width,
+        "the least and the greatest ordinate of each variable",
+    )?;
     let (name, unit) = match head.regular {
         true => (&items.abscissa.0, &items.abscissa.1),
         false => (&items.variables[0].0, &items.variables[0].1),
@@ -565,7 +567,7 @@ fn read_ordinates(cursor: &mut Cursor, head: &Head, items: &Items) -> Parsed<Rec
                 list.push(value);
             }
         }
-        record.lines.push(cursor.line() as u32);
+        record.lines.push(cursor.line as u32);
     }
     let unused: Vec<&str> = others
         .filter(|i| *i != counts && Some(*i) != sd)

@@ -83,6 +83,9 @@ fn rows(text: &str) -> impl Iterator<Item = (usize, &str)> + Clone {
     numbered_lines(text).filter(|(_, line)| !line.trim().is_empty() && comment(line).is_none())
 }
 
+/// Lines just before the data that are looked at for a header.
+const HEAD_ROWS: usize = 6;
+
 /// Where the data begins, how wide it is, and what its columns are called.
 #[derive(Debug)]
 struct Layout {
@@ -160,25 +163,17 @@ impl Layout {
                 ));
             }
         }
-        let split_head = |row| head_cells(row, dialect, self.width);
-        let tail = before
-            .iter()
-            .rev()
-            .take_while(|(_, row)| split_head(row).is_some())
-            .count();
+        let last_rows = before.iter().rev().take(HEAD_ROWS);
+        let named = last_rows.map_while(|(_, row)| head_cells(row, dialect, self.width));
+        let mut named: Vec<Vec<String>> = named.collect();
+        named.reverse();
+        let tail = named.len();
         let block = &before[before.len() - tail..];
-        let named = block
-            .iter()
-            .map(|(_, row)| split_head(row).unwrap_or_default());
-        let named: Vec<Vec<String>> = named.collect();
-        let telling = named
-            .iter()
-            .map(|names| words::telling(names))
-            .collect::<Vec<_>>();
-        let most = telling.iter().copied().max().unwrap_or(0);
+        let telling = |names: &Vec<String>| words::telling(names);
+        let most = named.iter().map(telling).max().unwrap_or(0);
         // Of several such lines the first that tells most is the header, the next its units.
         let head = if most > 0 {
-            telling.iter().position(|&t| t == most)
+            named.iter().position(|names| telling(names) == most)
         } else {
             tail.checked_sub(1)
         };
