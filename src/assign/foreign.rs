@@ -21,6 +21,8 @@ const GHOST_LN_SD: f64 = 0.6;
 const LINE_SD_EV: f64 = 0.005;
 /// See [`LINE_SD_EV`].
 const ENVELOPE_SD_EV: f64 = 0.06;
+/// A band that the data hardly place is nobody's line: its uncertainty counts up to this, eV.
+const LOOSEST_SD_EV: f64 = 0.05;
 /// Standard deviation of the logarithm of an envelope's width, and the range over which widths of
 /// unrelated bands are spread (0.03 to 1.5 eV).
 const ENVELOPE_WIDTH_LN_SD: f64 = 0.3;
@@ -206,7 +208,8 @@ impl Surroundings {
             anchor_ev(band)
         };
         let deviation_ev = place - line.energy_ev;
-        let variance = own_sd.powi(2) + offset_sd.powi(2) + band.vertical_sd.powi(2);
+        let place_sd = band.vertical_sd.min(LOOSEST_SD_EV);
+        let variance = own_sd.powi(2) + offset_sd.powi(2) + place_sd.powi(2);
         let mut weight = presence * shown * prior.window_width_ev();
         weight *= normal(deviation_ev - offset, variance);
         weight *= self.gas_look(band, data[at].look, line, offset, variance.sqrt());

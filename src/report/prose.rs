@@ -59,11 +59,12 @@ pub fn fit_quality(s: &FitStatistics) -> String {
 
 /// What the data do not determine.
 pub fn fit_notes(undetermined: &[String], correlations: &[CorrelatedPair]) -> Vec<String> {
-    let mut notes: Vec<String> = undetermined
-        .iter()
+    let mut notes: Vec<String> = (undetermined.iter().take(LISTED_NOTES))
         .map(|name| format!("The data do not determine: {name}."))
         .collect();
-    notes.extend(correlations.iter().map(|c| {
+    let mut strongest: Vec<&CorrelatedPair> = correlations.iter().collect();
+    strongest.sort_by(|a, b| b.correlation.abs().total_cmp(&a.correlation.abs()));
+    notes.extend(strongest.into_iter().take(LISTED_NOTES).map(|c| {
         let sign = if c.correlation < 0.0 { "−" } else { "+" };
         let size = c.correlation.abs();
         format!(
@@ -71,8 +72,18 @@ pub fn fit_notes(undetermined: &[String], correlations: &[CorrelatedPair]) -> Ve
             c.first, c.second
         )
     }));
+    let listed = undetermined.len().min(LISTED_NOTES) + correlations.len().min(LISTED_NOTES);
+    let more = undetermined.len() + correlations.len() - listed;
+    if more > 0 {
+        notes.push(format!(
+            "{more} more of these notes stand in the data file."
+        ));
+    }
     notes
 }
+
+/// How many undetermined parameters, and how many correlated pairs, are written out.
+const LISTED_NOTES: usize = 5;
 
 /// How computed energies were brought onto the measured ones.
 pub fn shift(dossier: &Dossier) -> String {
