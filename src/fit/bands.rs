@@ -55,16 +55,21 @@ pub fn fit_bands(
         chi_squared: deviance,
     });
     let first = parameters.background.parameters();
-    let peaks: Vec<Peak> = parameters
-        .lines
+    // As wide as a line may be, it is no band but a hump of the background.
+    let (humps, line_of): (Vec<usize>, Vec<usize>) =
+        (0..parameters.lines.len()).partition(|&k| parameters.lines[k].is_hump());
+    let peaks: Vec<Peak> = line_of
         .iter()
-        .enumerate()
-        .map(|(k, line)| describe(line, &solution, first + PER_LINE * k, significance[k]))
+        .map(|&k| {
+            let at = first + PER_LINE * k;
+            describe(&parameters.lines[k], &solution, at, significance[k])
+        })
         .collect();
     let fitted = Fitted {
         data: &data,
         parameters: &parameters,
         peaks: &peaks,
+        line_of: &line_of,
         covariance: &solution.covariance,
         price: builder.price,
     };
@@ -74,7 +79,7 @@ pub fn fit_bands(
         lines: peaks.len(),
         chi_squared: deviance,
     });
-    let names = names(&parameters);
+    let names = names(&parameters, &line_of);
     let expected = parameters.expected(&data);
     let residuals = data.residuals(&expected);
     let mut all_residuals = vec![0.0; trace.len()];
@@ -84,9 +89,14 @@ pub fn fit_bands(
         .iter()
         .map(|&e| {
             let inside = e.clamp(parameters.background.low, parameters.background.high);
-            parameters
+            let smooth = parameters
                 .background
-                .evaluate(inside, &parameters.coefficients, None)
+                .evaluate(inside, &parameters.coefficients, None);
+            let of_hump = |&k: &usize| {
+                let line = &parameters.lines[k];
+                line.area * line.shape().value(inside - line.position)
+            };
+            smooth + humps.iter().map(of_hump).sum::<f64>()
         })
         .collect();
     let total = trace
@@ -102,7 +112,7 @@ pub fn fit_bands(
         residuals: all_residuals,
         window_ev: [data.energy[0], data.energy[data.len() - 1]],
         statistics: statistics(&data, &residuals, &solution),
-        undetermined: undetermined(&parameters, &peaks, &solution, &names),
+        undetermined: undetermined(&fitted, &solution, &names),
         correlations: correlations(&solution.covariance, &names),
         peaks,
     })
@@ -211,12 +221,20 @@ fn describe(line: &Line, solution: &Solution, at: usize, significance: f64) -> P
     }
 }
 
-/// Names of all parameters; lines count from 1.
-fn names(parameters: &Parameters) -> Vec<String> {
+/// Names of all parameters; peaks count from 1 as in the result.
+fn names(parameters: &Parameters, line_of: &[usize]) -> Vec<String> {
     let mut names = parameters.background.names();
-    for k in 1..=parameters.lines.len() {
+    let mut humps = 0;
+    for k in 0..parameters.lines.len() {
+        let whose = match line_of.iter().position(|&line| line == k) {
+            Some(peak) => format!("line {}", peak + 1),
+            None => {
+                humps += 1;
+                format!("background hump {humps}")
+            }
+        };
         for what in ["position", "Gaussian width", "Lorentzian width", "area"] {
-            names.push(format!("line {k} {what}"));
+            names.push(format!("{whose} {what}"));
         }
     }
     names
@@ -238,12 +256,7 @@ fn statistics(data: &Channels, residuals: &[f64], solution: &Solution) -> FitSta
 }
 
 /// Parameters that the data do not determine, in words.
-fn undetermined(
-    parameters: &Parameters,
-    peaks: &[Peak],
-    solution: &Solution,
-    names: &[String],
-) -> Vec<String> {
+fn undetermined(fitted: &Fitted, solution: &Solution, names: &[String]) -> Vec<String> {
     let mut words = Vec::new();
     for direction in &solution.covariance.undetermined {
         let parts: Vec<&str> = direction.iter().map(|&(j, _)| names[j].as_str()).collect();
@@ -252,11 +265,10 @@ fn undetermined(
             _ => format!("{}: only together", parts.join(", ")),
         });
     }
-    let first = parameters.background.parameters();
-    for (k, peak) in peaks.iter().enumerate() {
-        let name = |what: usize| &names[first + PER_LINE * k + what];
+    for (k, peak) in fitted.peaks.iter().enumerate() {
+        let name = |what: usize| &names[fitted.at(k, what)];
         if peak.fwhm_sd.is_none() {
-            let why = if solution.at_bound[first + PER_LINE * k + 1] {
+            let why = if solution.at_bound[fitted.at(k, 1)] {
                 "held at the end of its range"
             } else {
                 "its uncertainty exceeds it"

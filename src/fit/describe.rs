@@ -11,6 +11,8 @@ pub(super) struct Fitted<'a> {
     pub data: &'a Channels,
     pub parameters: &'a Parameters,
     pub peaks: &'a [Peak],
+    /// Line of the model behind each peak: humps of the background are no peaks.
+    pub line_of: &'a [usize],
     pub covariance: &'a Covariance,
     /// Fall of the deviance that a line has to bring to be seen.
     pub price: f64,
@@ -63,9 +65,9 @@ impl Fitted<'_> {
         (self.price * variance.max(1.0)).sqrt() / 0.85
     }
 
-    /// Position in the covariance matrix of a parameter of a line: 0 position, 3 area.
-    fn at(&self, line: usize, what: usize) -> usize {
-        self.parameters.background.parameters() + PER_LINE * line + what
+    /// Number of a parameter of a peak: 0 position, 1 Gaussian width, 2 ratio, 3 area.
+    pub fn at(&self, peak: usize, what: usize) -> usize {
+        self.parameters.background.parameters() + PER_LINE * self.line_of[peak] + what
     }
 
     /// Variance of a quantity with the given derivatives by position and area of some lines.
@@ -200,7 +202,7 @@ impl Fitted<'_> {
     fn significance(&self, lines: &[usize], expected: &[f64]) -> f64 {
         let mut left = expected.to_vec();
         for &k in lines {
-            let (window, counts) = self.parameters.line_counts(self.data, k);
+            let (window, counts) = self.parameters.line_counts(self.data, self.line_of[k]);
             for (i, c) in window.zip(counts) {
                 left[i] -= c;
             }

@@ -159,7 +159,7 @@ pub struct BandFit {
     /// Ways to group the lines into bands, most probable first; probabilities sum to 1.
     pub groupings: Vec<Grouping>,
     /// Fitted background on the trace's axis, intensity (counts per eV); outside the fitted window
-    /// its value at the nearer end.
+    /// its value at the nearer end. Humps of the greatest width that a line may have belong to it.
     pub background: Vec<f64>,
     /// Fitted total on the trace's axis, intensity (counts per eV).
     pub total: Vec<f64>,

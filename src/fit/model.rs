@@ -49,6 +49,11 @@ impl Line {
         self.shape().fwhm()
     }
 
+    /// Whether it is as wide as lines are allowed to be: then it is a hump of the background.
+    pub fn is_hump(&self) -> bool {
+        self.gaussian >= 0.999 * WIDEST
+    }
+
     /// How far its counts matter: the Gaussian core to 10⁻¹⁰ of the top, a Lorentzian wing to
     /// about 10⁻⁵, and a margin for the line to move within one run of the solver.
     pub fn reach(&self) -> f64 {

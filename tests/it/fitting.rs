@@ -1,4 +1,5 @@
 //! The solver against certified values, and bands against traces whose truth is known.
 
 mod nist;
+mod progressions;
 mod synthetic;

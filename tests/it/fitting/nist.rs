@@ -55,6 +55,15 @@ fn zip(a: Dual, b: Dual, v: f64, f: impl Fn(f64, f64) -> f64) -> Dual {
     Dual { v, d }
 }
 
+fn product(a: Dual, b: Dual) -> Dual {
+    zip(a, b, a.v * b.v, |x, y| x * b.v + y * a.v)
+}
+
+fn ratio(a: Dual, b: Dual) -> Dual {
+    let v = a.v / b.v;
+    zip(a, b, v, |x, y| (x - y * v) / b.v)
+}
+
 impl Add for Dual {
     type Output = Dual;
     fn add(self, o: Dual) -> Dual {
@@ -70,14 +79,13 @@ impl Sub for Dual {
 impl Mul for Dual {
     type Output = Dual;
     fn mul(self, o: Dual) -> Dual {
-        zip(self, o, self.v * o.v, |a, b| a * o.v + b * self.v)
+        product(self, o)
     }
 }
 impl Div for Dual {
     type Output = Dual;
     fn div(self, o: Dual) -> Dual {
-        let v = self.v / o.v;
-        zip(self, o, v, |a, b| (a - b * v) / o.v)
+        ratio(self, o)
     }
 }
 impl Neg for Dual {

@@ -9,11 +9,11 @@ use rand_distr::{Distribution, Poisson};
 
 /// A line of the truth.
 #[derive(Clone, Copy)]
-struct Line {
-    position: f64,
-    area: f64,
-    gaussian: f64,
-    lorentzian: f64,
+pub(super) struct Line {
+    pub(super) position: f64,
+    pub(super) area: f64,
+    pub(super) gaussian: f64,
+    pub(super) lorentzian: f64,
 }
 
 fn line(position: f64, area: f64, gaussian: f64) -> Line {
@@ -26,7 +26,7 @@ fn line(position: f64, area: f64, gaussian: f64) -> Line {
 }
 
 /// Poisson counts on a uniform axis; `background` is counts per eV.
-fn trace(
+pub(super) fn trace(
     span: [f64; 2],
     channels: usize,
     lines: &[Line],
@@ -67,7 +67,7 @@ fn trace(
     }
 }
 
-fn fit(trace: &Trace) -> BandFit {
+pub(super) fn fit(trace: &Trace) -> BandFit {
     fit_bands(trace, &FitOptions::default(), &mut |_| {}).unwrap()
 }
 
@@ -162,7 +162,13 @@ fn sharp_line_on_a_broad_band_is_found_and_kept_apart() {
 }
 
 /// Members of a displaced oscillator.
-fn progression(origin: f64, spacing: f64, huang_rhys: f64, area: f64, width: f64) -> Vec<Line> {
+pub(super) fn progression(
+    origin: f64,
+    spacing: f64,
+    huang_rhys: f64,
+    area: f64,
+    width: f64,
+) -> Vec<Line> {
     let mut weight = (-huang_rhys).exp();
     let mut lines = Vec::new();
     for v in 0..12 {
