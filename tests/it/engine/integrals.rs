@@ -204,15 +204,15 @@ fn normalised_shells_have_unit_overlap_for_every_l() {
             assert!(error < 1e-13, "l = {l}, α = {alpha}: {error:e}");
         }
     }
-    // Auxiliary shells reach h, where only Coulomb integrals exist: the self-repulsion of a
-    // normalised h function is the same for every m and the off-diagonal elements vanish.
+    // Auxiliary shells reach i, where only Coulomb integrals exist: the self-repulsion of a
+    // normalised function is the same for every m and the off-diagonal elements vanish.
     for l in 0..=MAX_AUXILIARY_L {
         let alpha = 0.9;
         let one = basis(&[(Vector3::new(0.3, 0.2, -5.0), l, &[(alpha, 1.0)])]);
         let metric = integrals::coulomb_metric(&one);
         // In momentum space, (P|P) = 4π ∫ |χ(k)|²/k² d³k / (2π)³ with χ(k) ∝ k^l exp(−k²/4α)
         // against ∫ |χ(k)|² d³k / (2π)³ = 1: a ratio of gamma functions, (4π/2α)/(l + 1/2).
-        let expected = 4.0 * PI / (2.0 * alpha) / (l as f64 + 0.5) / 1.0;
+        let expected = 4.0 * PI / (2.0 * alpha) / (l as f64 + 0.5);
         let error = (metric - DMatrix::identity(2 * l + 1, 2 * l + 1) * expected).amax();
         assert!(error < 1e-12, "l = {l}: {error:e}");
     }
