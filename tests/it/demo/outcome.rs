@@ -8,7 +8,9 @@ use bandproof::levels::Levels;
 use bandproof::study::compute;
 use bandproof::study::request::StudyRequest;
 use bandproof::study::settings::Settings;
+use serde::{Deserialize, Serialize};
 use std::fmt::Write as _;
+use std::path::Path;
 
 /// A planted band may be found this far from its first moment, eV: where blurred envelopes (of a
 /// spread of some 0.15 eV) overlap, the shapes hardly say which counts belong to which.
@@ -186,11 +188,83 @@ fn describe(scenario: &Scenario, run: &Run) {
     }
 }
 
+/// What a study's outcome is remembered by.
+#[derive(Debug, PartialEq, Serialize, Deserialize)]
+struct Kept {
+    reduced_chi_squared: f64,
+    bands: Vec<KeptBand>,
+    remarks: Vec<String>,
+}
+
+#[derive(Debug, PartialEq, Serialize, Deserialize)]
+struct KeptBand {
+    vertical_ev: f64,
+    vertical_sd: f64,
+    area: f64,
+    members: usize,
+    hole_states: Vec<String>,
+    probability: Option<f64>,
+}
+
+impl Kept {
+    fn of(run: &Run) -> Self {
+        let bands = run.fit.groupings[run.assignment.grouping].bands.iter();
+        Kept {
+            reduced_chi_squared: run.fit.statistics.reduced_chi_squared,
+            bands: bands
+                .map(|band| {
+                    let found = run.assignment.matches.iter().find(|m| m.band == band.id);
+                    KeptBand {
+                        vertical_ev: band.vertical_ev,
+                        vertical_sd: band.vertical_sd,
+                        area: band.area,
+                        members: band.members.len(),
+                        hole_states: found.map_or(Vec::new(), |m| m.hole_states.clone()),
+                        probability: found.map(|m| m.probability),
+                    }
+                })
+                .collect(),
+            remarks: (run.assignment.remarks.iter())
+                .map(|r| format!("{:?} at {:.2} eV", r.kind, r.position_ev))
+                .collect(),
+        }
+    }
+
+    /// Whether two outcomes are the same within a small part of their uncertainties: another
+    /// processor may round differently on the way.
+    fn agrees_with(&self, other: &Kept) -> bool {
+        self.remarks == other.remarks
+            && (self.reduced_chi_squared / other.reduced_chi_squared - 1.0).abs() < 1e-3
+            && self.bands.len() == other.bands.len()
+            && self.bands.iter().zip(&other.bands).all(|(a, b)| {
+                a.hole_states == b.hole_states
+                    && a.members == b.members
+                    && (a.vertical_ev - b.vertical_ev).abs() < 0.1 * b.vertical_sd
+                    && (a.area / b.area - 1.0).abs() < 0.01
+                    && (a.probability.unwrap_or(0.0) - b.probability.unwrap_or(0.0)).abs() < 0.01
+            })
+    }
+}
+
 #[test]
-fn the_studies_come_out_right() {
+fn the_studies_come_out_right_and_as_kept() {
     for scenario in model::all() {
-        let wrong = complaints(&scenario, &run(&scenario, &levels(&scenario)));
+        let run = run(&scenario, &levels(&scenario));
+        let wrong = complaints(&scenario, &run);
         assert!(wrong.is_empty(), "{}: {wrong}", scenario.name);
+        let kept = Path::new(env!("CARGO_MANIFEST_DIR"))
+            .join("fits")
+            .join(format!("{}.json", scenario.name));
+        let now = Kept::of(&run);
+        if std::env::var_os("BANDPROOF_RENEW_FITS").is_some() {
+            std::fs::write(&kept, serde_json::to_string_pretty(&now).unwrap() + "\n").unwrap();
+        }
+        let before: Kept = serde_json::from_str(&super::text(kept)).unwrap();
+        assert!(
+            now.agrees_with(&before),
+            "{}: {now:#?}\nkept: {before:#?}",
+            scenario.name
+        );
     }
 }
 
