@@ -135,7 +135,10 @@ mod tests {
         fn run<S: Simd, const N: usize>(self, simd: S) {
             let x = Lanes::<S, N>::load(self.0);
             let one = Lanes::splat(simd, 1.0);
-            let y = x.mul_add(simd, x, one).sqrt(simd).div(simd, one.add(simd, one));
+            let y = x
+                .mul_add(simd, x, one)
+                .sqrt(simd)
+                .div(simd, one.add(simd, one));
             y.sub(simd, x.mul(simd, x)).store(self.0);
         }
     }
@@ -147,7 +150,10 @@ mod tests {
         dispatch(Polynomial(&mut numbers));
         for (x, y) in before.iter().zip(numbers.0) {
             let expected = (x * x + 1.0).sqrt() / 2.0 - x * x;
-            assert!((y - expected).abs() < 1e-14, "{x}: {y} instead of {expected}");
+            assert!(
+                (y - expected).abs() < 1e-14,
+                "{x}: {y} instead of {expected}"
+            );
         }
     }
 }

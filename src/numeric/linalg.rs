@@ -238,7 +238,10 @@ mod tests {
         let mut bad = DMatrix::<f64>::identity(4, 4);
         bad[(2, 2)] = -1.0;
         let error = cholesky(bad).expect_err("not positive definite");
-        assert_eq!(error, LinalgError::NotPositiveDefinite { pivot: 3, size: 4 });
+        assert_eq!(
+            error,
+            LinalgError::NotPositiveDefinite { pivot: 3, size: 4 }
+        );
     }
 
     #[test]
@@ -250,7 +253,11 @@ mod tests {
             let rebuilt = &vectors * DMatrix::from_diagonal(&values) * vectors.transpose();
             assert!((rebuilt - &symmetric).iter().all(|x| x.abs() < 1e-11));
             let identity = congruence(&vectors, &DMatrix::identity(n, n));
-            assert!((identity - DMatrix::identity(n, n)).iter().all(|x| x.abs() < 1e-12));
+            assert!(
+                (identity - DMatrix::identity(n, n))
+                    .iter()
+                    .all(|x| x.abs() < 1e-12)
+            );
             assert!(values.as_slice().windows(2).all(|w| w[0] <= w[1]));
         }
         let mut bad = DMatrix::<f64>::identity(3, 3);
