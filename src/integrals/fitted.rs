@@ -3,40 +3,52 @@
 //! (μν|λσ) ≈ Σ_PQ (μν|P) (P|Q)⁻¹ (Q|λσ) = Σ_Q B^Q_μν B^Q_λσ with B = L⁻¹ (P|μν) and
 //! (P|Q) = L·Lᵀ (Vahtras, Almlöf, Feyereisen, Chem. Phys. Lett. 213, 514, 1993; memory).
 //!
-//! Only one triangle of μν is kept, grouped by pairs of shells, and pairs that do not overlap are
-//! left out. The rows are cut into tiles of a few hundred; one thread makes the integrals of a
-//! tile, solves for B while they are in cache, and stores it with the rows running fast, so that
-//! B^Q for one Q is read in long runs.
+//! # Storage
+//! The basis is cut into groups of whole shells. Of the square of groups only the lower triangle of
+//! blocks is kept, and blocks whose functions nowhere overlap are left out; blocks on the diagonal
+//! are whole. Within a block the auxiliary functions are cut into chunks of [`CHUNK`]; a chunk is
+//! laid out `[ν][μ][Q]` with Q running fast. So a half transformation needs no unpacking: for one
+//! μ (or one ν) the block is a matrix with Q along its columns, whatever the triangle. Whatever is
+//! summed over Q is done chunk by chunk, which bounds the memory and fixes the order of the sums.
 
 use super::coulomb::{Workspace, coulomb_metric};
 use super::targets::Targets;
 use super::{IntegralError, check_auxiliary, check_orbital};
-use crate::basis::Basis;
-use crate::numeric::linalg::{cholesky, solve_lower, view};
-use faer::MatMut;
+use crate::basis::{Basis, Shell};
+use crate::numeric::linalg::{cholesky, product_sequential, solve_lower, view};
+use faer::{MatMut, MatRef};
 use nalgebra::DMatrix;
 use rayon::prelude::*;
+use std::ops::Range;
 
 /// Primitive products with a smaller self-repulsion estimate (hartree^½) are left out.
 const NEGLIGIBLE: f64 = 1e-13;
-/// Rows after which a tile is closed.
-const TILE_ROWS: usize = 256;
+/// Functions after which a group of shells is closed.
+const GROUP: usize = 32;
+/// Auxiliary functions of one chunk.
+pub const CHUNK: usize = 48;
 
-/// The rows of one pair of shells, functions of the first running fast.
-#[derive(Debug, Clone, Copy)]
-struct PairBlock {
-    a: (usize, usize),
-    b: (usize, usize),
-    /// First row within the tile.
-    row: usize,
+/// B^Q_μν for μ in one group and ν in one group that is not later.
+#[derive(Debug, Clone)]
+struct Block {
+    mu: Range<usize>,
+    nu: Range<usize>,
+    /// Chunk by chunk `[ν][μ][Q]`.
+    values: Vec<f64>,
 }
 
-#[derive(Debug, Clone)]
-struct Tile {
-    blocks: Vec<PairBlock>,
-    rows: usize,
-    /// Rows × auxiliary functions, rows running fast.
-    values: Vec<f64>,
+impl Block {
+    fn pairs(&self) -> usize {
+        self.mu.len() * self.nu.len()
+    }
+
+    fn diagonal(&self) -> bool {
+        self.mu.start == self.nu.start
+    }
+
+    fn chunk(&self, q: &Range<usize>) -> &[f64] {
+        &self.values[q.start * self.pairs()..q.end * self.pairs()]
+    }
 }
 
 /// B^Q_μν for all pairs of basis functions and all fitted auxiliary functions.
@@ -44,17 +56,15 @@ struct Tile {
 pub struct FittedPairs {
     functions: usize,
     auxiliaries: usize,
-    rows: usize,
-    tiles: Vec<Tile>,
+    blocks: Vec<Block>,
 }
 
 impl FittedPairs {
     /// Bytes that the fitted pairs of `functions` basis and `auxiliaries` auxiliary functions take
     /// at most.
     pub fn bytes(functions: usize, auxiliaries: usize) -> u64 {
-        // Blocks of a shell with itself are stored whole: 3 % more at most in practice.
-        let rows = functions as u64 * (functions as u64 + 8) / 2;
-        8 * rows * auxiliaries as u64
+        let pairs = functions as u64 * (functions + GROUP) as u64 / 2;
+        8 * pairs * auxiliaries as u64
     }
 
     /// Makes and fits the three-centre integrals.
@@ -70,20 +80,23 @@ impl FittedPairs {
                 source,
             })?;
         let targets = Targets::of_shells(&auxiliary.shells);
-        let tiles: Vec<Tile> = batches(basis)
+        let groups = groups(&basis.shells);
+        // The largest blocks come first, so that the threads finish together.
+        let mut places: Vec<(usize, usize)> = (0..groups.len())
+            .flat_map(|i| (0..=i).map(move |j| (i, j)))
+            .collect();
+        places.reverse();
+        let blocks = places
             .into_par_iter()
-            .map_init(
-                || (Workspace::default(), Vec::new()),
-                |(work, integrals), batch| {
-                    fitted_tile(basis, &batch, &targets, &lower, work, integrals)
-                },
-            )
+            .map_init(Builder::default, |builder, (i, j)| {
+                builder.block(groups[i], groups[j], &targets, &lower)
+            })
+            .flatten()
             .collect();
         Ok(Self {
             functions: basis.functions,
             auxiliaries: auxiliary.functions,
-            rows: tiles.iter().map(|t| t.rows).sum(),
-            tiles,
+            blocks,
         })
     }
 
@@ -97,139 +110,192 @@ impl FittedPairs {
         self.auxiliaries
     }
 
-    /// Number of pairs of functions kept (length of a packed vector).
-    pub fn rows(&self) -> usize {
-        self.rows
+    /// Number of chunks.
+    pub fn chunks(&self) -> usize {
+        self.auxiliaries.div_ceil(CHUNK)
     }
 
-    /// Copies B^Q for one Q as a packed vector.
+    /// The auxiliary functions of a chunk.
+    pub fn chunk(&self, index: usize) -> Range<usize> {
+        let start = index * CHUNK;
+        start..(start + CHUNK).min(self.auxiliaries)
+    }
+
+    /// Length of a packed vector: one number per stored pair of functions.
+    pub fn packed_len(&self) -> usize {
+        self.blocks.iter().map(Block::pairs).sum()
+    }
+
+    /// X^Q_μi = Σ_ν B^Q_μν C_νi for one chunk, laid out `[μ][i][Q]`: the columns of
+    /// `coefficients` are i, and `out` has chunk × columns × functions elements.
     ///
     /// # Panics
-    /// If `q` or the length of `out` is out of range.
-    pub fn read(&self, q: usize, out: &mut [f64]) {
-        assert_eq!(out.len(), self.rows, "length of a packed vector");
-        let mut rest = out;
-        for tile in &self.tiles {
-            let (now, later) = rest.split_at_mut(tile.rows);
-            now.copy_from_slice(&tile.values[q * tile.rows..][..tile.rows]);
+    /// If a size does not fit.
+    pub fn half_transform(&self, chunk: usize, coefficients: &DMatrix<f64>, out: &mut [f64]) {
+        let q = self.chunk(chunk);
+        let width = coefficients.ncols();
+        assert_eq!(coefficients.nrows(), self.functions, "rows of the coefficients");
+        assert_eq!(out.len(), q.len() * width * self.functions, "size of the result");
+        out.fill(0.0);
+        if width == 0 {
+            return;
+        }
+        let slab = q.len() * width;
+        let c = view(coefficients);
+        for block in &self.blocks {
+            let values = block.chunk(&q);
+            let (tall, wide) = (block.mu.len(), block.nu.len());
+            for mu in 0..tall {
+                // Columns are ν.
+                let b = MatRef::from_column_major_slice_with_stride(
+                    &values[mu * q.len()..],
+                    q.len(),
+                    wide,
+                    tall * q.len(),
+                );
+                let target = &mut out[(block.mu.start + mu) * slab..][..slab];
+                let target = MatMut::from_column_major_slice_mut(target, q.len(), width);
+                product_sequential(target, true, b, c.subrows(block.nu.start, wide));
+            }
+            if block.diagonal() {
+                continue;
+            }
+            for nu in 0..wide {
+                // Columns are μ.
+                let b = &values[nu * tall * q.len()..][..tall * q.len()];
+                let b = MatRef::from_column_major_slice(b, q.len(), tall);
+                let target = &mut out[(block.nu.start + nu) * slab..][..slab];
+                let target = MatMut::from_column_major_slice_mut(target, q.len(), width);
+                product_sequential(target, true, b, c.subrows(block.mu.start, tall));
+            }
+        }
+    }
+
+    /// Adds Σ_Q weights_Q B^Q_μν, Q in one chunk, to a packed vector.
+    ///
+    /// # Panics
+    /// If a size does not fit.
+    pub fn add_potential(&self, chunk: usize, weights: &[f64], packed: &mut [f64]) {
+        let q = self.chunk(chunk);
+        let weights = MatRef::from_column_major_slice(weights, q.len(), 1);
+        let mut rest = packed;
+        for block in &self.blocks {
+            let (now, later) = rest.split_at_mut(block.pairs());
+            let b = MatRef::from_column_major_slice(block.chunk(&q), q.len(), block.pairs());
+            let target = MatMut::from_column_major_slice_mut(now, block.pairs(), 1);
+            product_sequential(target, true, b.transpose(), weights);
             rest = later;
         }
     }
 
-    /// Packs a symmetric matrix so that the scalar product with B^Q is Σ_μν B^Q_μν M_μν.
-    pub fn pack_weighted(&self, matrix: &DMatrix<f64>) -> Vec<f64> {
-        let mut out = Vec::with_capacity(self.rows);
-        self.each_block(|block, _| {
-            let weight = if block.a.0 == block.b.0 { 1.0 } else { 2.0 };
-            for nu in block.b.0..block.b.1 {
-                for mu in block.a.0..block.a.1 {
-                    out.push(weight * matrix[(mu, nu)]);
+    /// The symmetric matrix of a packed vector.
+    pub fn unpack(&self, packed: &[f64]) -> DMatrix<f64> {
+        let mut matrix = DMatrix::zeros(self.functions, self.functions);
+        let mut values = packed.iter();
+        for block in &self.blocks {
+            for nu in block.nu.clone() {
+                for mu in block.mu.clone() {
+                    let value = *values.next().expect("a packed vector of these pairs");
+                    matrix[(mu, nu)] = value;
+                    matrix[(nu, mu)] = value;
                 }
             }
-        });
-        out
+        }
+        matrix
     }
+}
 
-    /// Spreads a packed vector out to the full symmetric matrix (column-major, functions²). Pairs
-    /// that were left out are not touched, so the matrix must start as zeros.
-    pub fn unpack(&self, packed: &[f64], matrix: &mut [f64]) {
-        let n = self.functions;
-        self.each_block(|block, start| {
-            let (first, end) = block.a;
-            let width = end - first;
-            let mut at = start;
-            for nu in block.b.0..block.b.1 {
-                let run = &packed[at..at + width];
-                matrix[nu * n + first..nu * n + end].copy_from_slice(run);
-                at += width;
-            }
-            if block.a.0 != block.b.0 {
-                let height = block.b.1 - block.b.0;
-                for mu in 0..width {
-                    let column = &mut matrix[(first + mu) * n + block.b.0..][..height];
-                    for (i, value) in column.iter_mut().enumerate() {
-                        *value = packed[start + i * width + mu];
+/// Cuts shells into runs of about [`GROUP`] functions.
+fn groups(shells: &[Shell]) -> Vec<&[Shell]> {
+    let mut groups = Vec::new();
+    let mut rest = shells;
+    while !rest.is_empty() {
+        let mut functions = 0;
+        let fits = |shell: &&Shell| {
+            functions += shell.len();
+            functions <= GROUP
+        };
+        let (now, later) = rest.split_at(rest.iter().take_while(fits).count().max(1));
+        groups.push(now);
+        rest = later;
+    }
+    groups
+}
+
+fn functions_of(group: &[Shell]) -> Range<usize> {
+    let last = &group[group.len() - 1];
+    group[0].first..last.first + last.len()
+}
+
+/// What one thread needs to make blocks.
+#[derive(Default)]
+struct Builder {
+    work: Workspace,
+    integrals: Vec<f64>,
+    /// Where in the block each row of `integrals` belongs: (μ, ν).
+    places: Vec<(usize, usize)>,
+}
+
+impl Builder {
+    /// Integrals and fit of one block; `None` if the groups do not overlap.
+    fn block(
+        &mut self,
+        left: &[Shell],
+        right: &[Shell],
+        targets: &Targets,
+        lower: &DMatrix<f64>,
+    ) -> Option<Block> {
+        let (mu, nu) = (functions_of(left), functions_of(right));
+        let mut block = Block {
+            values: Vec::new(),
+            mu,
+            nu,
+        };
+        for b in right {
+            self.integrals.clear();
+            self.places.clear();
+            // On the diagonal only one of (ab) and (ba) is computed.
+            for a in left.iter().filter(|a| a.first >= b.first) {
+                let any = self
+                    .work
+                    .push_pair(a, b, NEGLIGIBLE, targets, &mut self.integrals);
+                if any {
+                    for nu in b.functions() {
+                        for mu in a.functions() {
+                            self.places.push((mu - block.mu.start, nu - block.nu.start));
+                        }
                     }
                 }
             }
-        });
-    }
-
-    /// Calls `f` with every block and its first row in a packed vector.
-    fn each_block(&self, mut f: impl FnMut(&PairBlock, usize)) {
-        let mut first = 0;
-        for tile in &self.tiles {
-            for block in &tile.blocks {
-                f(block, first + block.row);
+            if self.places.is_empty() {
+                continue;
             }
-            first += tile.rows;
-        }
-    }
-}
-
-/// All pairs of shells (first ≥ second), cut where a tile is full.
-fn batches(basis: &Basis) -> Vec<Vec<(usize, usize)>> {
-    let mut batches = vec![Vec::new()];
-    let mut rows = 0;
-    for (i, a) in basis.shells.iter().enumerate() {
-        for (j, b) in basis.shells[..=i].iter().enumerate() {
-            if rows >= TILE_ROWS {
-                batches.push(Vec::new());
-                rows = 0;
+            let n = targets.len;
+            let right = MatMut::from_column_major_slice_mut(
+                &mut self.integrals[..],
+                n,
+                self.places.len(),
+            );
+            solve_lower(view(lower), right);
+            if block.values.is_empty() {
+                block.values.resize(block.pairs() * n, 0.0);
             }
-            rows += a.len() * b.len();
-            let last = batches.len() - 1;
-            batches[last].push((i, j));
+            self.store(&mut block, n);
         }
+        (!block.values.is_empty()).then_some(block)
     }
-    batches
-}
 
-fn fitted_tile(
-    basis: &Basis,
-    batch: &[(usize, usize)],
-    targets: &Targets,
-    lower: &DMatrix<f64>,
-    work: &mut Workspace,
-    integrals: &mut Vec<f64>,
-) -> Tile {
-    integrals.clear();
-    let mut blocks = Vec::new();
-    let mut rows = 0;
-    for &(i, j) in batch {
-        let (a, b) = (&basis.shells[i], &basis.shells[j]);
-        if work.push_pair(a, b, NEGLIGIBLE, targets, integrals) {
-            blocks.push(PairBlock {
-                a: (a.first, a.first + a.len()),
-                b: (b.first, b.first + b.len()),
-                row: rows,
-            });
-            rows += a.len() * b.len();
-        }
-    }
-    let n = targets.len;
-    let mut values = vec![0.0; rows * n];
-    if rows > 0 {
-        let right = MatMut::from_column_major_slice_mut(&mut integrals[..], n, rows);
-        solve_lower(view(lower), right);
-        transpose(integrals, n, &mut values);
-    }
-    Tile {
-        blocks,
-        rows,
-        values,
-    }
-}
-
-/// Transposes a column-major matrix with `height` rows, in blocks that fit a few cache lines.
-fn transpose(from: &[f64], height: usize, to: &mut [f64]) {
-    const SIDE: usize = 16;
-    let width = from.len() / height;
-    for i0 in (0..height).step_by(SIDE) {
-        for j0 in (0..width).step_by(SIDE) {
-            for i in i0..(i0 + SIDE).min(height) {
-                for j in j0..(j0 + SIDE).min(width) {
-                    to[i * width + j] = from[j * height + i];
+    fn store(&self, block: &mut Block, auxiliaries: usize) {
+        let (tall, pairs, diagonal) = (block.mu.len(), block.pairs(), block.diagonal());
+        let rows = self.integrals.chunks_exact(auxiliaries);
+        for (row, &(mu, nu)) in rows.zip(&self.places) {
+            for (chunk, values) in row.chunks(CHUNK).enumerate() {
+                let start = chunk * CHUNK * pairs;
+                let at = start + (nu * tall + mu) * values.len();
+                block.values[at..at + values.len()].copy_from_slice(values);
+                if diagonal {
+                    let at = start + (mu * tall + nu) * values.len();
+                    block.values[at..at + values.len()].copy_from_slice(values);
                 }
             }
         }

@@ -163,7 +163,7 @@ fn spherical_atom(number: u8, basis: &Basis, auxiliary: &Basis) -> Result<DMatri
     let mut diis = Diis::default();
     for _ in 0..ITERATIONS {
         let density = product(view(&orbitals), view(&orbitals).transpose());
-        let repulsion = two_electron(&pairs, &(&density * 2.0), std::slice::from_ref(&orbitals));
+        let repulsion = two_electron(&pairs, std::slice::from_ref(&orbitals), 2.0);
         let fock = &core + &repulsion.coulomb - &repulsion.exchange[0];
         let fds = &fock * &density * &s;
         let error = &fds - fds.transpose();

@@ -35,7 +35,7 @@ pub fn run(
     observer: &mut dyn FnMut(&ScfStep),
 ) -> Result<ScfResult, ScfError> {
     let occupied = types::occupied_orbitals(molecule, basis)?;
-    types::check_memory(basis, auxiliary, options)?;
+    types::check_memory(basis, auxiliary, &occupied, options)?;
     let nuclear_repulsion_hartree = molecule.nuclear_repulsion_hartree();
     let s = overlap(basis);
     let core = kinetic(basis) + nuclear_attraction(basis, &charges(molecule));
@@ -49,7 +49,7 @@ pub fn run(
     let mut last_energy = f64::INFINITY;
     for iteration in 0..=options.max_iterations {
         let density = Density::of(&channels);
-        let repulsion = fock::two_electron(&pairs, &density.total, &channels);
+        let repulsion = fock::two_electron(&pairs, &channels, density.weight);
         let focks: Vec<_> = repulsion
             .exchange
             .iter()
@@ -102,7 +102,6 @@ pub fn run(
 /// Density matrices of a set of channels; one channel stands for both spins.
 struct Density {
     channels: Vec<DMatrix<f64>>,
-    total: DMatrix<f64>,
     /// Electrons per orbital.
     weight: f64,
 }
@@ -114,13 +113,8 @@ impl Density {
             .map(|c| product(view(c), view(c).transpose()))
             .collect();
         let weight = if densities.len() == 1 { 2.0 } else { 1.0 };
-        let mut total = &densities[0] * weight;
-        for density in &densities[1..] {
-            total += density;
-        }
         Self {
             channels: densities,
-            total,
             weight,
         }
     }

@@ -224,21 +224,26 @@ pub(super) fn check_size(occupied: &[usize], available: usize) -> Result<(), Scf
     }
 }
 
-/// Bytes that a calculation takes at its largest: the fitted pairs, the Coulomb metric and its
+/// Bytes that a calculation with these numbers of occupied orbitals per spin channel (one channel
+/// in a closed shell) takes at its largest on the current thread pool: the fitted pairs, the Coulomb metric and its
 /// factor, the shares of the Fock build, and some twenty matrices of the size of the basis.
-pub fn memory_bytes(basis: &Basis, auxiliary: &Basis, channels: usize) -> u64 {
+pub fn memory_bytes(basis: &Basis, auxiliary: &Basis, occupied: &[usize]) -> u64 {
+    let channels = occupied.len();
+    let orbitals = occupied.iter().max().copied().unwrap_or(0);
+    let threads = rayon::current_num_threads();
     let (n, m) = (basis.functions as u64, auxiliary.functions as u64);
     FittedPairs::bytes(basis.functions, auxiliary.functions)
         + 8 * (2 * m * m + 20 * channels as u64 * n * n)
-        + fock::bytes(basis.functions, channels)
+        + fock::bytes(basis.functions, orbitals, channels, threads)
 }
 
 pub(super) fn check_memory(
     basis: &Basis,
     auxiliary: &Basis,
+    occupied: &[usize],
     options: &ScfOptions,
 ) -> Result<(), ScfError> {
-    let needed_bytes = memory_bytes(basis, auxiliary, 1);
+    let needed_bytes = memory_bytes(basis, auxiliary, occupied);
     if needed_bytes > options.memory_limit_bytes {
         return Err(ScfError::Memory {
             needed_bytes,

@@ -2,3 +2,5 @@
 
 #[path = "engine/integrals.rs"]
 mod integrals;
+#[path = "engine/scf.rs"]
+mod scf;

@@ -288,14 +288,14 @@ fn fitting_reproduces_a_product_that_the_auxiliary_set_holds() {
     let pairs = FittedPairs::new(&orbital, &auxiliary).expect("independent functions");
     let exact = oracle(&orbital).eri();
     let n = 2;
-    let mut full: Vec<DMatrix<f64>> = Vec::new();
-    for q in 0..3 {
-        let mut packed = vec![0.0; pairs.rows()];
-        pairs.read(q, &mut packed);
-        let mut matrix = DMatrix::zeros(n, n);
-        pairs.unpack(&packed, matrix.as_mut_slice());
-        full.push(matrix);
-    }
+    let full: Vec<DMatrix<f64>> = (0..3)
+        .map(|q| {
+            let mut packed = vec![0.0; pairs.packed_len()];
+            let unit: Vec<f64> = (0..3).map(|i| f64::from(u8::from(i == q))).collect();
+            pairs.add_potential(0, &unit, &mut packed);
+            pairs.unpack(&packed)
+        })
+        .collect();
     for i in 0..n * n * n * n {
         let (p, q, r, s) = (i / 8, i / 4 % 2, i / 2 % 2, i % 2);
         let fitted: f64 = full.iter().map(|m| m[(p, q)] * m[(r, s)]).sum();
