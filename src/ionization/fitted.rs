@@ -8,7 +8,7 @@
 use super::many_body::ManyBodyError;
 use crate::integrals::FittedPairs;
 use crate::numeric::gemm::{slice, slice_mut};
-use crate::numeric::linalg::product_sequential;
+use crate::numeric::linalg::{product_sequential, view};
 use crate::scf::{Orbitals, SpinOrbitals};
 use nalgebra::DMatrix;
 use rayon::prelude::*;
@@ -72,50 +72,16 @@ impl FittedOrbitals {
         occupied: std::ops::Range<usize>,
         wanted: Pairs,
     ) -> Self {
-        let n = pairs.functions();
         let energies = set.energies.as_slice();
         let (o, v) = (occupied.len(), energies.len() - occupied.end);
-        let c = set.coefficients.as_slice();
-        let c_o = slice(&c[occupied.start * n..occupied.end * n], n);
-        let c_v = slice(&c[occupied.end * n..], n);
-        let vv_rows = if wanted == Pairs::All { v * v } else { 0 };
-        let auxiliaries = pairs.auxiliaries();
-        let mut oo = DMatrix::zeros(o * o, auxiliaries);
-        let mut ov = DMatrix::zeros(o * v, auxiliaries);
-        let mut vv = DMatrix::zeros(vv_rows, auxiliaries);
-        // Without virtual pairs the chunks of `vv` are empty; the iterator still has to run.
-        let vv_chunks: Vec<&mut [f64]> = match vv_rows {
-            0 => (0..auxiliaries).map(|_| <&mut [f64]>::default()).collect(),
-            rows => vv.as_mut_slice().chunks_mut(rows).collect(),
+        let c_o = set.coefficients.columns(occupied.start, o).into_owned();
+        let c_v = set.coefficients.columns(occupied.end, v).into_owned();
+        let oo = both_transformed(pairs, &c_o, &c_o);
+        let ov = both_transformed(pairs, &c_o, &c_v);
+        let vv = match wanted {
+            Pairs::All => both_transformed(pairs, &c_v, &c_v),
+            Pairs::WithoutVirtual => DMatrix::zeros(0, pairs.auxiliaries()),
         };
-        oo.as_mut_slice()
-            .par_chunks_mut(o * o)
-            .zip(ov.as_mut_slice().par_chunks_mut(o * v))
-            .zip(vv_chunks)
-            .enumerate()
-            .for_each_init(
-                || {
-                    (
-                        vec![0.0; pairs.rows()],
-                        vec![0.0; n * n],
-                        vec![0.0; n * o.max(v)],
-                    )
-                },
-                |(packed, full, half), (q, ((oo, ov), vv))| {
-                    pairs.read(q, packed);
-                    pairs.unpack(packed, full);
-                    let b = slice(full, n);
-                    product_sequential(slice_mut(&mut half[..n * o], n), false, b, c_o);
-                    let half_o = slice(&half[..n * o], n);
-                    product_sequential(slice_mut(oo, o), false, c_o.transpose(), half_o);
-                    product_sequential(slice_mut(ov, v), false, c_v.transpose(), half_o);
-                    if !vv.is_empty() {
-                        product_sequential(slice_mut(&mut half[..n * v], n), false, b, c_v);
-                        let half_v = slice(&half[..n * v], n);
-                        product_sequential(slice_mut(vv, v), false, c_v.transpose(), half_v);
-                    }
-                },
-            );
         Self {
             frozen: occupied.start,
             occupied_energies: energies[occupied.clone()].to_vec(),
@@ -147,4 +113,45 @@ impl FittedOrbitals {
         let vv = if wanted == Pairs::All { v * v } else { 0 };
         8 * auxiliaries as u64 * (o * o + o * v + vv)
     }
+}
+
+/// B^P_pq in row p·(columns of `second`) + q and column P, for p in the columns of `first` and q in
+/// those of `second`.
+fn both_transformed(
+    pairs: &FittedPairs,
+    first: &DMatrix<f64>,
+    second: &DMatrix<f64>,
+) -> DMatrix<f64> {
+    let (n, wide, tall) = (pairs.functions(), first.ncols(), second.ncols());
+    let rows = wide * tall;
+    let mut out = DMatrix::zeros(rows, pairs.auxiliaries());
+    let mut chunks: Vec<(usize, &mut [f64])> = Vec::with_capacity(pairs.chunks());
+    let mut rest = out.as_mut_slice();
+    for chunk in 0..pairs.chunks() {
+        let (now, later) = rest.split_at_mut(rows * pairs.chunk(chunk).len());
+        chunks.push((chunk, now));
+        rest = later;
+    }
+    chunks.into_par_iter().for_each(|(chunk, target)| {
+        let width = pairs.chunk(chunk).len();
+        // [μ][p][Q], then [q][p][Q], auxiliary functions running fast.
+        let mut half = vec![0.0; width * wide * n];
+        pairs.half_transform(chunk, first, &mut half);
+        let mut full = vec![0.0; width * wide * tall];
+        product_sequential(
+            slice_mut(&mut full, width * wide),
+            false,
+            slice(&half, width * wide),
+            view(second),
+        );
+        for p in 0..wide {
+            for q in 0..tall {
+                let from = &full[width * (p + wide * q)..][..width];
+                for (aux, x) in from.iter().enumerate() {
+                    target[p * tall + q + rows * aux] = *x;
+                }
+            }
+        }
+    });
+    out
 }

@@ -1,5 +1,6 @@
 //! Ionization energies from orbitals.
 
+pub mod adc;
 pub mod fitted;
 pub mod many_body;
 pub mod poles;

@@ -16,8 +16,8 @@ use nalgebra::{DMatrix, DVector};
 
 /// Pairs that are not converged are followed from this share of the wanted weight on.
 const FOLLOWED_SHARE: f64 = 0.25;
-/// How far above the ceiling unconverged pairs are followed at most.
-const MARGIN: f64 = 0.02;
+/// Error of a residual norm that is got as a difference of squares, relative to the value.
+const ESTIMATE_ERROR: f64 = 1e-5;
 /// A direction with a smaller norm after orthogonalisation adds nothing.
 const DEPENDENT: f64 = 1e-7;
 /// Smallest denominator of the preconditioner.
@@ -105,7 +105,7 @@ pub fn search(
         let exhausted = space.len() >= size;
         let open: Vec<usize> = (0..followed.len())
             .filter(|&k| {
-                let reaches = values[followed[k]] - norms[k].min(MARGIN) < search.ceiling;
+                let reaches = values[followed[k]] - norms[k] < search.ceiling;
                 norms[k] > search.residual && reaches && !exhausted
             })
             .collect();
@@ -132,7 +132,11 @@ pub fn search(
         if condensed {
             space.condense(&vectors, &followed, start);
         }
-        let added = space.extend(operator, directions);
+        let mut added = space.extend(operator, directions);
+        if added == 0 {
+            // An exact preconditioner turns a residual back into the space; the bare one leads out.
+            added = space.extend(operator, residuals.select_columns(&open));
+        }
         if iteration == search.max_iterations || (added == 0 && !condensed) {
             return Err(DavidsonError::NotConverged {
                 open: open.len(),
@@ -180,6 +184,8 @@ struct Space {
     vectors: DMatrix<f64>,
     images: DMatrix<f64>,
     projected: DMatrix<f64>,
+    /// Scalar products of the images.
+    gram: DMatrix<f64>,
 }
 
 impl Space {
@@ -189,6 +195,7 @@ impl Space {
             vectors: DMatrix::zeros(size, 0),
             images: DMatrix::zeros(size, 0),
             projected: DMatrix::zeros(0, 0),
+            gram: DMatrix::zeros(0, 0),
         }
     }
 
@@ -208,22 +215,12 @@ impl Space {
             return 0;
         }
         let images = operator.apply(&fresh);
-        let old = self.len();
         let cross = product(view(&self.vectors).transpose(), view(&images));
         let own = product(view(&fresh).transpose(), view(&images));
-        let mut projected = DMatrix::zeros(old + added, old + added);
-        projected
-            .view_mut((0, 0), (old, old))
-            .copy_from(&self.projected);
-        projected.view_mut((0, old), (old, added)).copy_from(&cross);
-        projected
-            .view_mut((old, 0), (added, old))
-            .copy_from(&cross.transpose());
-        let symmetric = (&own + own.transpose()) * 0.5;
-        projected
-            .view_mut((old, old), (added, added))
-            .copy_from(&symmetric);
-        self.projected = projected;
+        grow(&mut self.projected, &cross, &own);
+        let cross = product(view(&self.images).transpose(), view(&images));
+        let own = product(view(&images).transpose(), view(&images));
+        grow(&mut self.gram, &cross, &own);
         append(&mut self.vectors, &fresh);
         append(&mut self.images, &images);
         added
@@ -282,7 +279,8 @@ impl Space {
         }
     }
 
-    /// Positions of the Ritz pairs that are wanted or may become so.
+    /// Positions of the Ritz pairs that have enough weight to be wanted or to become so, and whose
+    /// residual norm (estimated here) lets them reach below the ceiling.
     fn followed(
         &self,
         values: &DVector<f64>,
@@ -290,11 +288,13 @@ impl Space {
         search: &Search,
     ) -> Vec<usize> {
         let leading = self.vectors.rows(0, search.leading).into_owned() * vectors;
+        let turned = product(view(&self.gram), view(vectors));
         (0..values.len())
             .filter(|&k| {
-                let weight = leading.column(k).norm_squared();
-                values[k] < search.ceiling + MARGIN
-                    && weight >= FOLLOWED_SHARE * search.least_weight
+                let squared = vectors.column(k).dot(&turned.column(k)) - values[k] * values[k];
+                let residual = squared.max(0.0).sqrt() + ESTIMATE_ERROR * (1.0 + values[k].abs());
+                leading.column(k).norm_squared() >= FOLLOWED_SHARE * search.least_weight
+                    && values[k] - residual < search.ceiling
             })
             .collect()
     }
@@ -334,7 +334,22 @@ impl Space {
         self.vectors = product(view(&self.vectors), view(&kept));
         self.images = product(view(&self.images), view(&kept));
         self.projected = kept.tr_mul(&(&self.projected * &kept));
+        self.gram = kept.tr_mul(&(&self.gram * &kept));
     }
+}
+
+/// Borders a symmetric matrix.
+fn grow(matrix: &mut DMatrix<f64>, cross: &DMatrix<f64>, own: &DMatrix<f64>) {
+    let (old, added) = cross.shape();
+    let mut out = DMatrix::zeros(old + added, old + added);
+    out.view_mut((0, 0), (old, old)).copy_from(matrix);
+    out.view_mut((0, old), (old, added)).copy_from(cross);
+    out.view_mut((old, 0), (added, old))
+        .copy_from(&cross.transpose());
+    let symmetric = (own + own.transpose()) * 0.5;
+    out.view_mut((old, old), (added, added))
+        .copy_from(&symmetric);
+    *matrix = out;
 }
 
 fn append(matrix: &mut DMatrix<f64>, columns: &DMatrix<f64>) {

@@ -147,9 +147,7 @@ pub enum ScfError {
         expected: usize,
     },
     /// More orbitals to occupy than the basis has.
-    #[error(
-        "{needed} orbitals are occupied but the basis has only {available} independent functions"
-    )]
+    #[error("{needed} orbitals are occupied but the basis has only {available} independent functions")]
     BasisTooSmall {
         /// Occupied orbitals.
         needed: usize,

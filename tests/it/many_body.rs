@@ -1,5 +1,7 @@
 //! Many-body ionization energies against an independent program and near-exact values.
 
+#[path = "many_body/adc.rs"]
+mod adc;
 #[path = "many_body/second_order.rs"]
 mod second_order;
 #[path = "many_body/support.rs"]

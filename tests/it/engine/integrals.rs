@@ -55,9 +55,7 @@ fn oracle(basis: &Basis) -> integral::Basis {
             s.l,
             s.centre_bohr.into(),
             s.exponents.clone(),
-            coefficients
-                .map(|(&a, c)| c / primitive_norm(s.l, a))
-                .collect(),
+            coefficients.map(|(&a, c)| c / primitive_norm(s.l, a)).collect(),
         )
         .expect("a shell the library takes")
     });
@@ -90,11 +88,7 @@ fn place(l: usize, m: usize) -> usize {
 }
 
 fn places(basis: &Basis) -> Vec<usize> {
-    let of_shell = |s: &Shell| {
-        (0..s.len())
-            .map(|m| s.first + place(s.l, m))
-            .collect::<Vec<_>>()
-    };
+    let of_shell = |s: &Shell| (0..s.len()).map(|m| s.first + place(s.l, m)).collect::<Vec<_>>();
     basis.shells.iter().flat_map(of_shell).collect()
 }
 
@@ -117,20 +111,8 @@ fn assert_close(basis: &Basis, ours: &DMatrix<f64>, theirs: &[f64], tolerance: f
 fn one_electron_integrals_agree_with_an_independent_library() {
     let ours = scattered(MAX_ORBITAL_L);
     let theirs = oracle(&ours);
-    assert_close(
-        &ours,
-        &integrals::overlap(&ours),
-        &theirs.overlap(),
-        INTEGRAL,
-        "overlap",
-    );
-    assert_close(
-        &ours,
-        &integrals::kinetic(&ours),
-        &theirs.kinetic(),
-        INTEGRAL,
-        "kinetic",
-    );
+    assert_close(&ours, &integrals::overlap(&ours), &theirs.overlap(), INTEGRAL, "overlap");
+    assert_close(&ours, &integrals::kinetic(&ours), &theirs.kinetic(), INTEGRAL, "kinetic");
     let origin = Vector3::new(0.2, -1.0, 0.5);
     let components = integrals::dipole(&ours, origin);
     for (x, y) in components.iter().zip(theirs.dipole(origin.into())) {
@@ -165,7 +147,8 @@ fn three_centre_integrals_agree_with_an_independent_library() {
                     for ib in 0..b.len() {
                         for ip in 0..p.len() {
                             let x = ours[(ib * a.len() + ia, p.first + ip)];
-                            let (ta, tb, tp) = (place(a.l, ia), place(b.l, ib), place(p.l, ip));
+                            let (ta, tb, tp) =
+                                (place(a.l, ia), place(b.l, ib), place(p.l, ip));
                             let y = block[(ta * b.len() + tb) * p.len() + tp];
                             assert!(
                                 (x - y).abs() <= INTEGRAL * y.abs().max(1.0),
@@ -183,13 +166,7 @@ fn three_centre_integrals_agree_with_an_independent_library() {
 fn metric_agrees_with_an_independent_library() {
     let auxiliary = scattered(MAX_AUXILIARY_L);
     let ours = integrals::coulomb_metric(&auxiliary);
-    assert_close(
-        &auxiliary,
-        &ours,
-        &oracle(&auxiliary).eri_2c(),
-        INTEGRAL,
-        "metric",
-    );
+    assert_close(&auxiliary, &ours, &oracle(&auxiliary).eri_2c(), INTEGRAL, "metric");
 }
 
 #[test]
