@@ -5,13 +5,12 @@ use crate::units::{angstrom_to_bohr, bohr_to_angstrom};
 use nalgebra::Vector3;
 use std::collections::BTreeMap;
 
-/// Two atoms count as bonded when they are closer than this factor times the sum of their covalent
-/// radii.
+/// Two atoms count as bonded when they are closer than the sum of their covalent radii plus this, Å.
 ///
-/// 1.3 takes in the long single bonds (F–F 1.41 Å is 1.24 sums, N–N of N2O4 1.25, the bridge of
-/// diborane 1.16) and leaves out the shortest second neighbours (C···C across cyclobutane 1.41
-/// sums, F···F of tetrafluoromethane 1.9); bond lengths from memory.
-pub const BOND_FACTOR: f64 = 1.3;
+/// 0.45 Å takes in the long bonds (H–H of H2⁺ is 0.44 Å longer than its sum, N–N of N2O4 0.36, F–F
+/// 0.27) and leaves out the shortest second neighbours (C···C across cyclobutane 0.63, H···H of
+/// water 0.89, F···F of tetrafluoromethane 1.02); bond lengths from memory.
+pub const BOND_SLACK_ANGSTROM: f64 = 0.45;
 
 /// Two bonded atoms.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -100,8 +99,8 @@ impl Molecule {
         bohr_to_angstrom((self.atoms[a].position_bohr - self.atoms[b].position_bohr).norm())
     }
 
-    /// Pairs of atoms closer than [`BOND_FACTOR`] times the sum of their covalent radii, by rising
-    /// atom numbers.
+    /// Pairs of atoms closer than the sum of their covalent radii plus [`BOND_SLACK_ANGSTROM`], by
+    /// rising atom numbers.
     pub fn bonded_pairs(&self) -> Vec<BondedPair> {
         let mut pairs = Vec::new();
         for a in 0..self.atoms.len() {
@@ -111,7 +110,7 @@ impl Molecule {
                     continue;
                 };
                 let length_angstrom = self.distance_angstrom(a, b);
-                if length_angstrom < BOND_FACTOR * (ra + rb) {
+                if length_angstrom < ra + rb + BOND_SLACK_ANGSTROM {
                     pairs.push(BondedPair {
                         atoms: [a, b],
                         length_angstrom,
@@ -217,5 +216,8 @@ mod tests {
         assert_eq!(water.bond_name([0, 1]), "O1–H2");
         let fluorine = molecule("F 0 0 0\nF 0 0 1.41", 0);
         assert_eq!(fluorine.bonded_pairs().len(), 1);
+        let cyclobutane = molecule("C 0 0 0\nC 1.52 0 0\nC 1.52 1.52 0\nC 0 1.52 0", 0);
+        assert_eq!(cyclobutane.bonded_pairs().len(), 4);
+        assert_eq!(molecule("H 0 0 0\nH 0 0 1.057", 1).bonded_pairs().len(), 1);
     }
 }

@@ -5,14 +5,15 @@
 //! top of each other, and a multiplicity that its electrons can have.
 
 mod elements;
+mod error;
 mod geometry;
 mod xyz;
 
 pub use elements::{
     LAST_SUPPORTED, core_orbitals, covalent_radius_angstrom, number_of_symbol, symbol,
 };
-pub use geometry::{BOND_FACTOR, BondedPair};
-pub use xyz::{CLOSEST_ANGSTROM, FARTHEST_ANGSTROM, GeometryError};
+pub use error::{CLOSEST_ANGSTROM, FARTHEST_ANGSTROM, GeometryError};
+pub use geometry::{BOND_SLACK_ANGSTROM, BondedPair};
 
 use nalgebra::Vector3;
 

@@ -4,6 +4,7 @@
 //! channel of doubly occupied orbitals. Building blocks: [`guess`], [`fock`], [`diis`],
 //! [`orthogonal`]. Equations: Szabo and Ostlund, Modern Quantum Chemistry, chapter 3.
 
+mod degeneracy;
 pub mod diis;
 pub mod fock;
 pub mod guess;
@@ -11,6 +12,7 @@ pub mod orthogonal;
 mod steer;
 mod types;
 
+pub use degeneracy::DEGENERACY_TOLERANCE_HARTREE;
 pub use types::{Orbitals, ScfError, ScfOptions, ScfResult, ScfStep, SpinOrbitals, memory_bytes};
 
 use crate::basis::Basis;
