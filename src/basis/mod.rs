@@ -22,8 +22,8 @@ use thiserror::Error;
 
 /// Highest angular momentum of an orbital shell (g).
 pub const MAX_ORBITAL_L: usize = 4;
-/// Highest angular momentum of an auxiliary shell (h).
-pub const MAX_AUXILIARY_L: usize = 5;
+/// Highest angular momentum of an auxiliary shell (i, which transition metals need).
+pub const MAX_AUXILIARY_L: usize = 6;
 
 /// A contracted shell of 2l + 1 real spherical Gaussians on one centre.
 ///
@@ -372,11 +372,10 @@ mod tests {
             missing.contains("no functions for K; it covers H–Ar, Ca–Kr"),
             "{missing}"
         );
-        let high = Basis::bundled(&atom(26), "def2-universal-jkfit")
-            .unwrap_err()
-            .to_string();
+        let set = BasisSet::parse("# role orbital\nFe\nh 1.0\n", "odd").unwrap();
+        let high = Basis::new(&atom(26), &set).unwrap_err().to_string();
         assert!(
-            high.contains("l = 6 on Fe; the highest supported is l = 5"),
+            high.contains("l = 5 on Fe; the highest supported is l = 4"),
             "{high}"
         );
     }

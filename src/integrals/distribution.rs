@@ -80,7 +80,10 @@ impl Distribution {
     /// # Panics
     /// If an angular momentum exceeds [`MAX_ORBITAL_L`].
     pub fn set_pair(&mut self, a: &Shell, b: &Shell, threshold: f64) {
-        assert!(a.l <= MAX_ORBITAL_L && b.l <= MAX_ORBITAL_L, "orbital shells end at g");
+        assert!(
+            a.l <= MAX_ORBITAL_L && b.l <= MAX_ORBITAL_L,
+            "orbital shells end at g"
+        );
         self.degree = a.l + b.l;
         self.rows = a.len() * b.len();
         self.primitives.clear();
@@ -160,14 +163,7 @@ impl Distribution {
 }
 
 /// Adds factor × S_a S_b in Hermite Gaussians to `e` (triple × row).
-fn expand_product(
-    e: &mut [f64],
-    rows: usize,
-    la: usize,
-    lb: usize,
-    factor: f64,
-    axes: &[Axis; 3],
-) {
+fn expand_product(e: &mut [f64], rows: usize, la: usize, lb: usize, factor: f64, axes: &[Axis; 3]) {
     let mut row = 0;
     for right in hermite::harmonic_terms(lb) {
         for left in hermite::harmonic_terms(la) {

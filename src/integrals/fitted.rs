@@ -134,8 +134,16 @@ impl FittedPairs {
     pub fn half_transform(&self, chunk: usize, coefficients: &DMatrix<f64>, out: &mut [f64]) {
         let q = self.chunk(chunk);
         let width = coefficients.ncols();
-        assert_eq!(coefficients.nrows(), self.functions, "rows of the coefficients");
-        assert_eq!(out.len(), q.len() * width * self.functions, "size of the result");
+        assert_eq!(
+            coefficients.nrows(),
+            self.functions,
+            "rows of the coefficients"
+        );
+        assert_eq!(
+            out.len(),
+            q.len() * width * self.functions,
+            "size of the result"
+        );
         out.fill(0.0);
         if width == 0 {
             return;
@@ -271,11 +279,8 @@ impl Builder {
                 continue;
             }
             let n = targets.len;
-            let right = MatMut::from_column_major_slice_mut(
-                &mut self.integrals[..],
-                n,
-                self.places.len(),
-            );
+            let right =
+                MatMut::from_column_major_slice_mut(&mut self.integrals[..], n, self.places.len());
             solve_lower(view(lower), right);
             if block.values.is_empty() {
                 block.values.resize(block.pairs() * n, 0.0);

@@ -104,7 +104,10 @@ static HARMONICS: LazyLock<Vec<Vec<Vec<Term>>>> = LazyLock::new(|| {
     (0..=MAX_AUXILIARY_L)
         .map(|l| {
             let matrix = solid_harmonics(l);
-            matrix.row_iter().map(|row| terms(row.transpose(), l)).collect()
+            matrix
+                .row_iter()
+                .map(|row| terms(row.transpose(), l))
+                .collect()
         })
         .collect()
 });

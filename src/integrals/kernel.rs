@@ -149,8 +149,7 @@ impl Kernel for Coulomb<'_> {
                         potential::<S, N>(simd, order, primitive, block, derivatives);
                         harmonic::<S, N>(simd, harmonics, derivatives, slab);
                     }
-                    let (now, later) =
-                        expansion.split_at(primitives.len() * triples * left.rows);
+                    let (now, later) = expansion.split_at(primitives.len() * triples * left.rows);
                     expansion = later;
                     let product = Product {
                         expansion: now,
@@ -194,13 +193,10 @@ fn potential<S: Simd, const N: usize>(
     let alpha = p.mul(simd, ratio);
     let mut f = [Lanes::splat(simd, 0.0); boys::MAX_ORDER + 1];
     boys::lanes(simd, order, alpha.mul(simd, squared), &mut f);
-    let mut factor = ratio
-        .sqrt(simd)
-        .mul(simd, Lanes::load(&right.charge))
-        .mul(
-            simd,
-            Lanes::splat(simd, 2.0 * std::f64::consts::PI / left.exponent),
-        );
+    let mut factor = ratio.sqrt(simd).mul(simd, Lanes::load(&right.charge)).mul(
+        simd,
+        Lanes::splat(simd, 2.0 * std::f64::consts::PI / left.exponent),
+    );
     let minus_two_alpha = alpha.mul(simd, Lanes::splat(simd, -2.0));
     for value in &mut f[..=order] {
         *value = value.mul(simd, factor);

@@ -8,7 +8,7 @@
 //! fitted and stored is described in [`fitted`]. Why this recurrence: `docs/engine.md`.
 //!
 //! # Conventions
-//! Atomic units. Orbital shells to g, auxiliary shells to h. Functions of a shell from m = −l to
+//! Atomic units. Orbital shells to g, auxiliary shells to i. Functions of a shell from m = −l to
 //! m = +l, harmonics as in [`crate::basis::harmonics`]. Matrices are functions × functions and
 //! exactly symmetric. All results are the same to the last bit for any number of threads.
 
@@ -61,7 +61,7 @@ pub fn check_orbital(basis: &Basis) -> Result<(), IntegralError> {
 /// Checks that an auxiliary basis can be handled here.
 ///
 /// # Errors
-/// If a shell lies beyond h.
+/// If a shell lies beyond i.
 pub fn check_auxiliary(basis: &Basis) -> Result<(), IntegralError> {
     check(basis, MAX_AUXILIARY_L)
 }

@@ -47,17 +47,20 @@ pub fn dipole(basis: &Basis, origin: Vector3<f64>) -> [DMatrix<f64>; 3] {
 pub fn nuclear_attraction(basis: &Basis, charges: &[(f64, Vector3<f64>)]) -> DMatrix<f64> {
     let electrons: Vec<_> = charges.iter().map(|&(z, centre)| (-z, centre)).collect();
     let targets = Targets::of_charges(&electrons);
-    symmetric_by_pairs(basis, |pair, _, scratch: &mut (Scratch, Vec<Eight>), out| {
-        let (scratch, raw) = scratch;
-        let size = pair.rows * targets.width;
-        if raw.len() < size {
-            raw.resize(size, Eight::ZERO);
-        }
-        kernel::coulomb(pair, &targets, scratch, raw);
-        for (row, value) in raw.chunks_exact(targets.width).zip(out) {
-            targets.gather(row, std::slice::from_mut(value));
-        }
-    })
+    symmetric_by_pairs(
+        basis,
+        |pair, _, scratch: &mut (Scratch, Vec<Eight>), out| {
+            let (scratch, raw) = scratch;
+            let size = pair.rows * targets.width;
+            if raw.len() < size {
+                raw.resize(size, Eight::ZERO);
+            }
+            kernel::coulomb(pair, &targets, scratch, raw);
+            for (row, value) in raw.chunks_exact(targets.width).zip(out) {
+                targets.gather(row, std::slice::from_mut(value));
+            }
+        },
+    )
 }
 
 /// Integrals of 1, r − P and |r − P|² over one row of one primitive.

@@ -93,7 +93,11 @@ impl Targets {
         let mut groups = Vec::new();
         let mut width = 0;
         let mut sources: Vec<Vec<u32>> = vec![Vec::new(); len];
-        for (l, list) in entries.iter().enumerate().filter(|(_, list)| !list.is_empty()) {
+        for (l, list) in entries
+            .iter()
+            .enumerate()
+            .filter(|(_, list)| !list.is_empty())
+        {
             let first = width;
             let blocks: Vec<Block> = list
                 .chunks(8)
@@ -101,7 +105,9 @@ impl Targets {
                 .map(|(b, chunk)| {
                     // Unused lanes repeat the first primitive with no charge.
                     let of = |f: &dyn Fn(&Entry) -> f64| {
-                        Eight(std::array::from_fn(|i| f(chunk.get(i).unwrap_or(&chunk[0]))))
+                        Eight(std::array::from_fn(|i| {
+                            f(chunk.get(i).unwrap_or(&chunk[0]))
+                        }))
                     };
                     for (lane, entry) in chunk.iter().enumerate() {
                         for m in 0..2 * l + 1 {

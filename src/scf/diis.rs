@@ -40,7 +40,11 @@ impl Diis {
             self.forget_oldest();
         }
         let entry = Entry { fock, error };
-        let mut row: VecDeque<f64> = self.entries.iter().map(|e| inner(&e.error, &entry.error)).collect();
+        let mut row: VecDeque<f64> = self
+            .entries
+            .iter()
+            .map(|e| inner(&e.error, &entry.error))
+            .collect();
         for (old, product) in self.products.iter_mut().zip(&row) {
             old.push_back(*product);
         }
@@ -80,10 +84,16 @@ impl Diis {
         eigen.eigenvalues.apply(|v| *v = v.max(1e-15));
         // min wᵀBw with Σw = 1 is w ∝ B⁻¹·1.
         let ones = DVector::from_column_slice(&scale);
-        let projected = eigen.eigenvectors.tr_mul(&ones).component_div(&eigen.eigenvalues);
+        let projected = eigen
+            .eigenvectors
+            .tr_mul(&ones)
+            .component_div(&eigen.eigenvalues);
         let mut weights = (&eigen.eigenvectors * projected).component_mul(&ones);
         weights /= weights.sum();
-        weights.iter().all(|w| w.abs() < LARGEST_WEIGHT).then_some(weights)
+        weights
+            .iter()
+            .all(|w| w.abs() < LARGEST_WEIGHT)
+            .then_some(weights)
     }
 
     fn combine(&self, weights: &DVector<f64>) -> Vec<DMatrix<f64>> {

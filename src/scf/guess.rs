@@ -46,7 +46,10 @@ pub fn superposed_atoms(
         };
         placed.push((basis.atom_functions[index].start, which));
     }
-    let columns = placed.iter().map(|&(_, which)| solved[which].2.ncols()).sum();
+    let columns = placed
+        .iter()
+        .map(|&(_, which)| solved[which].2.ncols())
+        .sum();
     let mut out = DMatrix::zeros(basis.functions, columns);
     let mut column = 0;
     for (first, which) in placed {
@@ -76,7 +79,7 @@ fn single_atom(basis: &Basis, atom: usize) -> Basis {
         name: basis.name.clone(),
         shells,
         functions: range.len(),
-        atom_functions: vec![0..range.len()],
+        atom_functions: std::iter::once(0..range.len()).collect(),
     }
 }
 
@@ -132,16 +135,14 @@ impl Channel {
 fn radial(l: usize, firsts: &[usize], matrix: &DMatrix<f64>) -> DMatrix<f64> {
     let width = 2 * l + 1;
     DMatrix::from_fn(firsts.len(), firsts.len(), |i, j| {
-        let sum: f64 = (0..width).map(|m| matrix[(firsts[i] + m, firsts[j] + m)]).sum();
+        let sum: f64 = (0..width)
+            .map(|m| matrix[(firsts[i] + m, firsts[j] + m)])
+            .sum();
         sum / width as f64
     })
 }
 
-fn spherical_atom(
-    number: u8,
-    basis: &Basis,
-    auxiliary: &Basis,
-) -> Result<DMatrix<f64>, ScfError> {
+fn spherical_atom(number: u8, basis: &Basis, auxiliary: &Basis) -> Result<DMatrix<f64>, ScfError> {
     let s = overlap(basis);
     let charge = [(f64::from(number), Vector3::zeros())];
     let core = kinetic(basis) + nuclear_attraction(basis, &charge);
@@ -218,7 +219,10 @@ mod tests {
     #[test]
     fn configurations_hold_all_electrons() {
         for number in 1..=86 {
-            assert_eq!(configuration(number).iter().sum::<usize>(), usize::from(number));
+            assert_eq!(
+                configuration(number).iter().sum::<usize>(),
+                usize::from(number)
+            );
         }
         assert_eq!(configuration(35), [8, 17, 10, 0]);
         assert_eq!(configuration(29), [7, 12, 10, 0]);

@@ -44,44 +44,37 @@ pub fn run(
     let (x, removed) = orthogonal::canonical_orthogonalisation(&s)?;
     types::check_size(&occupied, x.ncols())?;
     let pairs = FittedPairs::new(basis, auxiliary)?;
+    let fock_matrices = |channels: &[DMatrix<f64>], density: &Density| -> Vec<_> {
+        let repulsion = fock::two_electron(&pairs, channels, density.weight);
+        let exchange = repulsion.exchange.iter();
+        exchange.map(|k| &core + &repulsion.coulomb - k).collect()
+    };
 
-    let guess = guess::superposed_atoms(molecule, basis, auxiliary)?;
-    let mut channels = vec![guess; occupied.len()];
+    // The guess is no determinant: it only supplies the first Fock matrix.
+    let guess = vec![guess::superposed_atoms(molecule, basis, auxiliary)?; occupied.len()];
+    let mut channels = occupy(&x, &fock_matrices(&guess, &Density::of(&guess)), &occupied)?;
     let mut steering = steer::Steering::default();
     let mut last_energy = f64::INFINITY;
-    for iteration in 0..=options.max_iterations {
+    let mut iteration = 0;
+    loop {
+        iteration += 1;
         let density = Density::of(&channels);
-        let repulsion = fock::two_electron(&pairs, &channels, density.weight);
-        let focks: Vec<_> = repulsion
-            .exchange
-            .iter()
-            .map(|k| &core + &repulsion.coulomb - k)
-            .collect();
+        let focks = fock_matrices(&channels, &density);
         let energy = nuclear_repulsion_hartree + density.electronic_energy(&core, &focks);
-        if iteration == 0 {
-            // The guess is no determinant: it only supplies the first Fock matrix.
-            channels = occupy(&x, &focks, &occupied)?;
-            continue;
-        }
         let gradients = density.gradients(&focks, &s, &x);
-        let gradient = gradients.iter().map(|g| g.amax()).fold(0.0, f64::max);
         let step = ScfStep {
             iteration,
             energy_hartree: energy,
             energy_change_hartree: energy - last_energy,
-            gradient_hartree: gradient,
+            gradient_hartree: gradients.iter().map(|g| g.amax()).fold(0.0, f64::max),
         };
         observer(&step);
-        if !step.converged(options) && (iteration == options.max_iterations || !energy.is_finite())
-        {
-            return Err(ScfError::NotConverged {
-                iterations: iteration,
-                energy_change_hartree: step.energy_change_hartree,
-                gradient_hartree: gradient,
-            });
+        let converged = step.converged(options);
+        if !converged && (iteration >= options.max_iterations || !energy.is_finite()) {
+            return Err(step.not_converged());
         }
         let focks = steering.next(&step, focks, gradients, &density.channels, &s);
-        if step.converged(options) {
+        if converged {
             // The extrapolated Fock matrix is closer to the solution than the last one.
             let orbitals = types::orbitals(&x, &focks, &occupied)?;
             return Ok(ScfResult {
@@ -91,14 +84,13 @@ pub fn run(
                 nuclear_repulsion_hartree,
                 iterations: iteration,
                 energy_change_hartree: step.energy_change_hartree,
-                gradient_hartree: gradient,
+                gradient_hartree: step.gradient_hartree,
                 removed_functions: removed,
             });
         }
         channels = occupy(&x, &focks, &occupied)?;
         last_energy = energy;
     }
-    unreachable!("the last iteration returns")
 }
 
 /// Density matrices of a set of channels; one channel stands for both spins.

@@ -58,3 +58,42 @@ impl Steering {
         focks
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::numeric::linalg::symmetric_eigen;
+
+    #[test]
+    fn a_stuck_calculation_gets_its_empty_levels_raised() {
+        let s = DMatrix::identity(2, 2);
+        let fock = DMatrix::from_diagonal_element(2, 2, -0.5) + DMatrix::from_element(2, 2, -0.1);
+        // The lower orbital (1, 1)/√2 is occupied: levels −0.7 and −0.5.
+        let density = DMatrix::from_element(2, 2, 0.5);
+        let mut steering = Steering::default();
+        let mut levels = |iteration, gradient_hartree| {
+            let step = ScfStep {
+                iteration,
+                energy_hartree: -1.0,
+                energy_change_hartree: 1.0,
+                gradient_hartree,
+            };
+            let error = DMatrix::from_element(2, 2, gradient_hartree);
+            let next = steering.next(
+                &step,
+                vec![fock.clone()],
+                vec![error],
+                std::slice::from_ref(&density),
+                &s,
+            );
+            symmetric_eigen(&next[0]).expect("finite").0
+        };
+        for iteration in 1..=PATIENCE {
+            assert!((levels(iteration, 0.2)[1] + 0.5).abs() < 1e-12);
+        }
+        let raised = levels(PATIENCE + 1, 0.2);
+        assert!((raised[0] + 0.7).abs() < 1e-12 && (raised[1] + 0.5 - SHIFTS[0]).abs() < 1e-12);
+        // Near the end nothing is shifted any more.
+        assert!((levels(PATIENCE + 2, 1e-4)[1] + 0.5).abs() < 1e-12);
+    }
+}

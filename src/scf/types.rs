@@ -96,6 +96,14 @@ impl ScfStep {
         self.energy_change_hartree.abs() <= options.energy_tolerance_hartree
             && self.gradient_hartree <= options.gradient_tolerance_hartree
     }
+
+    pub(super) fn not_converged(&self) -> ScfError {
+        ScfError::NotConverged {
+            iterations: self.iteration,
+            energy_change_hartree: self.energy_change_hartree,
+            gradient_hartree: self.gradient_hartree,
+        }
+    }
 }
 
 /// A converged calculation.
@@ -147,7 +155,9 @@ pub enum ScfError {
         expected: usize,
     },
     /// More orbitals to occupy than the basis has.
-    #[error("{needed} orbitals are occupied but the basis has only {available} independent functions")]
+    #[error(
+        "{needed} orbitals are occupied but the basis has only {available} independent functions"
+    )]
     BasisTooSmall {
         /// Occupied orbitals.
         needed: usize,
@@ -206,7 +216,7 @@ pub(super) fn occupied_orbitals(
             expected: molecule.atoms.len(),
         });
     }
-    if molecule.multiplicity != 1 || electrons % 2 != 0 {
+    if molecule.multiplicity != 1 || !electrons.is_multiple_of(2) {
         return Err(ScfError::OpenShell {
             multiplicity: molecule.multiplicity,
             electrons,

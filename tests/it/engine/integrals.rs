@@ -17,9 +17,11 @@ fn primitive_norm(l: usize, alpha: f64) -> f64 {
     (double * (PI / a).sqrt() / (2f64.powi(l as i32 + 2) * a.powi(l as i32 + 1))).powf(-0.5)
 }
 
-/// A basis from (centre, l, [(exponent, coefficient of the normalised primitive)]); contractions
-/// are not renormalised.
-fn basis(shells: &[(Vector3<f64>, usize, &[(f64, f64)])]) -> Basis {
+/// Centre, l, [(exponent, coefficient of the normalised primitive)].
+type Contraction<'a> = (Vector3<f64>, usize, &'a [(f64, f64)]);
+
+/// A basis of such contractions, which are not renormalised.
+fn basis(shells: &[Contraction]) -> Basis {
     let mut functions = 0;
     let shells: Vec<Shell> = shells
         .iter()
@@ -55,7 +57,9 @@ fn oracle(basis: &Basis) -> integral::Basis {
             s.l,
             s.centre_bohr.into(),
             s.exponents.clone(),
-            coefficients.map(|(&a, c)| c / primitive_norm(s.l, a)).collect(),
+            coefficients
+                .map(|(&a, c)| c / primitive_norm(s.l, a))
+                .collect(),
         )
         .expect("a shell the library takes")
     });
@@ -88,7 +92,11 @@ fn place(l: usize, m: usize) -> usize {
 }
 
 fn places(basis: &Basis) -> Vec<usize> {
-    let of_shell = |s: &Shell| (0..s.len()).map(|m| s.first + place(s.l, m)).collect::<Vec<_>>();
+    let of_shell = |s: &Shell| {
+        (0..s.len())
+            .map(|m| s.first + place(s.l, m))
+            .collect::<Vec<_>>()
+    };
     basis.shells.iter().flat_map(of_shell).collect()
 }
 
@@ -111,8 +119,20 @@ fn assert_close(basis: &Basis, ours: &DMatrix<f64>, theirs: &[f64], tolerance: f
 fn one_electron_integrals_agree_with_an_independent_library() {
     let ours = scattered(MAX_ORBITAL_L);
     let theirs = oracle(&ours);
-    assert_close(&ours, &integrals::overlap(&ours), &theirs.overlap(), INTEGRAL, "overlap");
-    assert_close(&ours, &integrals::kinetic(&ours), &theirs.kinetic(), INTEGRAL, "kinetic");
+    assert_close(
+        &ours,
+        &integrals::overlap(&ours),
+        &theirs.overlap(),
+        INTEGRAL,
+        "overlap",
+    );
+    assert_close(
+        &ours,
+        &integrals::kinetic(&ours),
+        &theirs.kinetic(),
+        INTEGRAL,
+        "kinetic",
+    );
     let origin = Vector3::new(0.2, -1.0, 0.5);
     let components = integrals::dipole(&ours, origin);
     for (x, y) in components.iter().zip(theirs.dipole(origin.into())) {
@@ -147,8 +167,7 @@ fn three_centre_integrals_agree_with_an_independent_library() {
                     for ib in 0..b.len() {
                         for ip in 0..p.len() {
                             let x = ours[(ib * a.len() + ia, p.first + ip)];
-                            let (ta, tb, tp) =
-                                (place(a.l, ia), place(b.l, ib), place(p.l, ip));
+                            let (ta, tb, tp) = (place(a.l, ia), place(b.l, ib), place(p.l, ip));
                             let y = block[(ta * b.len() + tb) * p.len() + tp];
                             assert!(
                                 (x - y).abs() <= INTEGRAL * y.abs().max(1.0),
@@ -166,7 +185,13 @@ fn three_centre_integrals_agree_with_an_independent_library() {
 fn metric_agrees_with_an_independent_library() {
     let auxiliary = scattered(MAX_AUXILIARY_L);
     let ours = integrals::coulomb_metric(&auxiliary);
-    assert_close(&auxiliary, &ours, &oracle(&auxiliary).eri_2c(), INTEGRAL, "metric");
+    assert_close(
+        &auxiliary,
+        &ours,
+        &oracle(&auxiliary).eri_2c(),
+        INTEGRAL,
+        "metric",
+    );
 }
 
 #[test]
@@ -179,15 +204,15 @@ fn normalised_shells_have_unit_overlap_for_every_l() {
             assert!(error < 1e-13, "l = {l}, α = {alpha}: {error:e}");
         }
     }
-    // Auxiliary shells reach h, where only Coulomb integrals exist: the self-repulsion of a
-    // normalised h function is the same for every m and the off-diagonal elements vanish.
+    // Auxiliary shells reach i, where only Coulomb integrals exist: the self-repulsion of a
+    // normalised function is the same for every m and the off-diagonal elements vanish.
     for l in 0..=MAX_AUXILIARY_L {
         let alpha = 0.9;
         let one = basis(&[(Vector3::new(0.3, 0.2, -5.0), l, &[(alpha, 1.0)])]);
         let metric = integrals::coulomb_metric(&one);
         // In momentum space, (P|P) = 4π ∫ |χ(k)|²/k² d³k / (2π)³ with χ(k) ∝ k^l exp(−k²/4α)
         // against ∫ |χ(k)|² d³k / (2π)³ = 1: a ratio of gamma functions, (4π/2α)/(l + 1/2).
-        let expected = 4.0 * PI / (2.0 * alpha) / (l as f64 + 0.5) / 1.0;
+        let expected = 4.0 * PI / (2.0 * alpha) / (l as f64 + 0.5);
         let error = (metric - DMatrix::identity(2 * l + 1, 2 * l + 1) * expected).amax();
         assert!(error < 1e-12, "l = {l}: {error:e}");
     }

@@ -1,7 +1,7 @@
 //! Hartree-Fock against reference values (origin: `tests/data/engine/README.md`), and what must
 //! hold for any molecule.
 
-use bandproof::basis::{Basis, BasisSet};
+use bandproof::basis::{Basis, BasisSet, Shell};
 use bandproof::integrals;
 use bandproof::molecule::Molecule;
 use bandproof::scf::{self, Orbitals, ScfError, ScfOptions, ScfResult, SpinOrbitals};
@@ -27,13 +27,18 @@ struct Reference {
 }
 
 fn data(file: &str) -> String {
-    let path = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/data/engine").join(file);
+    let path = Path::new(env!("CARGO_MANIFEST_DIR"))
+        .join("tests/data/engine")
+        .join(file);
     std::fs::read_to_string(&path).unwrap_or_else(|e| panic!("{}: {e}", path.display()))
 }
 
 fn references(bases: &[&str]) -> Vec<Reference> {
-    let all: Vec<Reference> = serde_json::from_str(&data("closed_shells.json")).expect("valid JSON");
-    all.into_iter().filter(|r| bases.contains(&r.basis.as_str())).collect()
+    let all: Vec<Reference> =
+        serde_json::from_str(&data("closed_shells.json")).expect("valid JSON");
+    all.into_iter()
+        .filter(|r| bases.contains(&r.basis.as_str()))
+        .collect()
 }
 
 /// A test molecule, at the positions in bohr that the reference had.
@@ -55,8 +60,14 @@ fn bases(molecule: &Molecule, name: &str) -> (Basis, Basis) {
 
 fn solve(molecule: &Molecule, basis: &str) -> ScfResult {
     let (orbital, auxiliary) = bases(molecule, basis);
-    scf::run(molecule, &orbital, &auxiliary, &ScfOptions::default(), &mut |_| {})
-        .unwrap_or_else(|e| panic!("{} / {basis}: {e}", molecule.name))
+    scf::run(
+        molecule,
+        &orbital,
+        &auxiliary,
+        &ScfOptions::default(),
+        &mut |_| {},
+    )
+    .unwrap_or_else(|e| panic!("{} / {basis}: {e}", molecule.name))
 }
 
 fn restricted(result: &ScfResult) -> &SpinOrbitals {
@@ -68,26 +79,46 @@ fn restricted(result: &ScfResult) -> &SpinOrbitals {
 
 fn compare(bases: &[&str], energy_tolerance: f64, orbital_tolerance: f64) {
     let references = references(bases);
-    assert_eq!(references.len(), 23 * bases.len(), "molecules with reference values");
+    assert_eq!(
+        references.len(),
+        23 * bases.len(),
+        "molecules with reference values"
+    );
     let (mut worst_energy, mut worst_orbital) = (0.0f64, 0.0f64);
     for reference in references {
         let label = format!("{} / {}", reference.molecule, reference.basis);
         let molecule = molecule(&reference.molecule);
         let result = solve(&molecule, &reference.basis);
         let repulsion = result.nuclear_repulsion_hartree - reference.nuclear_repulsion_hartree;
-        assert!(repulsion.abs() < 1e-9, "{label}: nuclear repulsion off by {repulsion:e}");
+        assert!(
+            repulsion.abs() < 1e-9,
+            "{label}: nuclear repulsion off by {repulsion:e}"
+        );
         let energy = result.energy_hartree - reference.energy_hartree;
-        assert!(energy.abs() < energy_tolerance, "{label}: energy off by {energy:e}");
+        assert!(
+            energy.abs() < energy_tolerance,
+            "{label}: energy off by {energy:e}"
+        );
         worst_energy = worst_energy.max(energy.abs());
         let orbitals = restricted(&result);
-        assert_eq!(orbitals.coefficients.nrows(), reference.functions, "{label}");
+        assert_eq!(
+            orbitals.coefficients.nrows(),
+            reference.functions,
+            "{label}"
+        );
         for (i, expected) in reference.occupied_hartree.iter().enumerate() {
             let error = orbitals.energies[i] - expected;
-            assert!(error.abs() < orbital_tolerance, "{label}: orbital {i} off by {error:e}");
+            assert!(
+                error.abs() < orbital_tolerance,
+                "{label}: orbital {i} off by {error:e}"
+            );
             worst_orbital = worst_orbital.max(error.abs());
         }
         for (ours, theirs) in result.dipole_debye.iter().zip(reference.dipole_debye) {
-            assert!((ours - theirs).abs() < 1e-4, "{label}: dipole {ours} against {theirs}");
+            assert!(
+                (ours - theirs).abs() < 1e-4,
+                "{label}: dipole {ours} against {theirs}"
+            );
         }
     }
     println!("largest deviation: energy {worst_energy:.1e}, orbital {worst_orbital:.1e} hartree");
@@ -115,7 +146,11 @@ fn energy_does_not_depend_on_the_frame() {
     let result = solve(&moved, "def2-tzvp");
     assert!((result.energy_hartree - reference.energy_hartree).abs() < 1e-9);
     let change = &restricted(&result).energies - &restricted(&reference).energies;
-    assert!(change.amax() < 1e-7, "orbital energies moved by {:e}", change.amax());
+    assert!(
+        change.amax() < 1e-7,
+        "orbital energies moved by {:e}",
+        change.amax()
+    );
     // The dipole of a neutral molecule turns with it.
     let turned = rotation * Vector3::from(reference.dipole_debye);
     assert!((turned - Vector3::from(result.dipole_debye)).norm() < 1e-5);
@@ -126,8 +161,8 @@ fn energy_does_not_depend_on_the_order_of_atoms() {
     let original = molecule("H2CO");
     let mut reversed = original.clone();
     reversed.atoms.reverse();
-    let difference = solve(&original, "cc-pvdz").energy_hartree
-        - solve(&reversed, "cc-pvdz").energy_hartree;
+    let difference =
+        solve(&original, "cc-pvdz").energy_hartree - solve(&reversed, "cc-pvdz").energy_hartree;
     assert!(difference.abs() < 1e-9, "{difference:e}");
 }
 
@@ -149,7 +184,9 @@ fn same_bits_for_one_and_two_threads() {
     let molecule = molecule("furan");
     let run = |threads| {
         let pool = rayon::ThreadPoolBuilder::new().num_threads(threads);
-        pool.build().expect("a thread pool").install(|| solve(&molecule, "def2-svp"))
+        pool.build()
+            .expect("a thread pool")
+            .install(|| solve(&molecule, "def2-svp"))
     };
     assert_eq!(run(1), run(2));
 }
@@ -165,7 +202,10 @@ fn ions_and_heavy_atoms_converge() {
     };
     let water = highest(0, "3\n\nO 0 0 0.117\nH 0 0.757 -0.471\nH 0 -0.757 -0.471\n");
     let hydroxide = highest(-1, "2\n\nO 0 0 0\nH 0 0 0.96\n");
-    let hydronium = highest(1, "4\n\nO 0 0 0.1\nH 0 0.94 -0.2\nH 0.81 -0.47 -0.2\nH -0.81 -0.47 -0.2\n");
+    let hydronium = highest(
+        1,
+        "4\n\nO 0 0 0.1\nH 0 0.94 -0.2\nH 0.81 -0.47 -0.2\nH -0.81 -0.47 -0.2\n",
+    );
     assert!(hydronium < water && water < hydroxide);
     let bromide = highest(0, "2\n\nH 0 0 0\nBr 0 0 1.414\n");
     let krypton = highest(0, "1\n\nKr 0 0 0\n");
@@ -184,7 +224,12 @@ fn what_cannot_be_done_is_said() {
     let mut triplet = water.clone();
     triplet.multiplicity = 3;
     let error = run(&triplet, &ScfOptions::default()).expect_err("an open shell");
-    assert!(error.to_string().contains("multiplicity 3 with 10 electrons"), "{error}");
+    assert!(
+        error
+            .to_string()
+            .contains("multiplicity 3 with 10 electrons"),
+        "{error}"
+    );
     let hasty = ScfOptions {
         max_iterations: 3,
         ..ScfOptions::default()
@@ -208,15 +253,32 @@ fn what_cannot_be_done_is_said() {
     assert!(matches!(error, ScfError::Memory { .. }), "{error}");
     let mut naked = water.clone();
     naked.charge = 10;
-    assert_eq!(run(&naked, &ScfOptions::default()), Err(ScfError::NoElectrons));
+    assert_eq!(
+        run(&naked, &ScfOptions::default()),
+        Err(ScfError::NoElectrons)
+    );
     let mut twice = basis.clone();
-    twice.shells.extend(basis.shells.iter().cloned().map(|mut shell| {
-        shell.first += basis.functions;
-        shell
-    }));
-    twice.functions *= 2;
-    let result = scf::run(&water, &twice, &auxiliary, &ScfOptions::default(), &mut |_| {})
-        .expect("dependent functions are removed");
+    twice.shells.clear();
+    twice.functions = 0;
+    for shell in basis.shells.iter().flat_map(|shell| [shell, shell]) {
+        let first = twice.functions;
+        twice.functions += shell.len();
+        twice.shells.push(Shell {
+            first,
+            ..shell.clone()
+        });
+    }
+    for range in &mut twice.atom_functions {
+        *range = 2 * range.start..2 * range.end;
+    }
+    let result = scf::run(
+        &water,
+        &twice,
+        &auxiliary,
+        &ScfOptions::default(),
+        &mut |_| {},
+    )
+    .expect("dependent functions are removed");
     assert_eq!(result.removed_functions, basis.functions);
 }
 
@@ -226,8 +288,14 @@ fn every_iteration_is_observed() {
     let (basis, auxiliary) = bases(&water, "def2-svp");
     let mut steps = Vec::new();
     let mut observer = |step: &scf::ScfStep| steps.push(*step);
-    let result = scf::run(&water, &basis, &auxiliary, &ScfOptions::default(), &mut observer)
-        .expect("water converges");
+    let result = scf::run(
+        &water,
+        &basis,
+        &auxiliary,
+        &ScfOptions::default(),
+        &mut observer,
+    )
+    .expect("water converges");
     assert_eq!(steps.len(), result.iterations);
     assert!(steps.iter().enumerate().all(|(i, s)| s.iteration == i + 1));
     assert_eq!(steps[steps.len() - 1].energy_hartree, result.energy_hartree);
