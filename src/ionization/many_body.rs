@@ -1,6 +1,5 @@
 //! What the many-body methods share: their errors.
 
-use crate::integrals::IntegralError;
 use crate::numeric::davidson::DavidsonError;
 use crate::numeric::linalg::LinalgError;
 
@@ -47,17 +46,9 @@ pub enum ManyBodyError {
         /// Auxiliary functions.
         auxiliaries: usize,
     },
-    /// The quasi-particle equation of an orbital was not solved.
-    #[error("the quasi-particle equation of orbital {orbital} was not solved: {reason}")]
-    QuasiParticle {
-        /// Orbital, from 1.
-        orbital: usize,
-        /// What happened.
-        reason: String,
-    },
-    /// Integrals could not be made.
+    /// Characters of the orbitals are missing.
     #[error(transparent)]
-    Integrals(#[from] IntegralError),
+    Ionization(#[from] super::IonizationError),
     /// Eigenvectors did not converge.
     #[error(transparent)]
     Davidson(#[from] DavidsonError),

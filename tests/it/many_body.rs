@@ -2,6 +2,12 @@
 
 #[path = "many_body/adc.rs"]
 mod adc;
+#[path = "many_body/identities.rs"]
+mod identities;
+#[path = "many_body/levels.rs"]
+mod levels;
+#[path = "many_body/p3.rs"]
+mod p3;
 #[path = "many_body/second_order.rs"]
 mod second_order;
 #[path = "many_body/support.rs"]

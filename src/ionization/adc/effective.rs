@@ -20,7 +20,7 @@
 use super::Order;
 use super::ladder::{brillouin, hole_overlap, mean_field, particle_ladder, three_virtual};
 use super::layout::{
-    Shape, add_transpose, combine, divide, exchanged, spin_summed, to_pairs, to_rings,
+    Shape, add_transpose, combine, divide, exchanged, spin_adapt, spin_summed, to_pairs, to_rings,
 };
 use super::operator::{AdcMatrix, Interaction};
 use crate::ionization::fitted::FittedOrbitals;
@@ -101,6 +101,40 @@ pub fn build(orbitals: &FittedOrbitals, order: Order) -> (AdcMatrix, Amplitudes)
         two_hole,
     };
     (matrix, amplitudes)
+}
+
+/// The matrix of ADC(2)-x and, apart from it, the second-order coupling (spin-adapted, in the
+/// arrangement of [`AdcMatrix::coupling`]): what the P3 self-energy is made of.
+pub fn build_for_p3(orbitals: &FittedOrbitals) -> (AdcMatrix, DMatrix<f64>) {
+    let shape = Shape {
+        o: orbitals.occupied(),
+        v: orbitals.virtuals(),
+    };
+    let mut t = ring_exchange(orbitals);
+    let interaction = Interaction {
+        exchange: t.clone(),
+        direct: ring_direct(orbitals, shape),
+        holes: hole_interaction(orbitals, shape),
+    };
+    divide(
+        &mut t,
+        &orbitals.occupied_energies,
+        &orbitals.virtual_energies,
+    );
+    let mut second = DMatrix::zeros(shape.two_hole(), shape.o);
+    let integrals = three_occupied(orbitals);
+    let (u, crossed) = (spin_summed(&t, shape), exchanged(&t, shape));
+    add_small_coupling(&integrals, &t, &u, &crossed, shape, &mut second);
+    let pairs = to_pairs(&t, shape);
+    for i in 0..shape.o {
+        add_ladder_coupling(&three_virtual(orbitals, i), &pairs, i, shape, &mut second);
+    }
+    spin_adapt(second.as_mut_slice(), shape);
+    let first = first_order_coupling(orbitals, shape);
+    let (e_o, e_v) = (&orbitals.occupied_energies, &orbitals.virtual_energies);
+    let empty = DMatrix::zeros(shape.o, shape.o);
+    let matrix = AdcMatrix::new(shape, empty, first, e_o, e_v, Some(interaction));
+    (matrix, second)
 }
 
 /// First-order doubles and what is made of them right away.
@@ -287,18 +321,7 @@ impl ThirdOrder<'_> {
         add_small_coupling(&integrals, t, u, &crossed, shape, coupling);
         for i in 0..o {
             let three = three_virtual(orbitals, i);
-            let mut ladder = DMatrix::zeros(v, o * o);
-            let turned = slice(three.as_slice(), v * v);
-            gemm(
-                view_mut(&mut ladder),
-                false,
-                1.0,
-                turned.transpose(),
-                view(&pairs),
-            );
-            for (x, l) in coupling.column_mut(i).iter_mut().zip(ladder.iter()) {
-                *x += l;
-            }
+            let ladder = add_ladder_coupling(&three, &pairs, i, shape, coupling);
             let by_particle = slice(summed_pairs.as_slice(), v);
             let own = slice(ladder.as_slice(), shape.two_hole());
             let target = slice_mut(&mut numerator.as_mut_slice()[i * v..(i + 1) * v], v);
@@ -400,6 +423,30 @@ impl ThirdOrder<'_> {
 fn ring_columns(x: &DMatrix<f64>, m: usize, shape: Shape) -> DMatrix<f64> {
     let Shape { o, v } = shape;
     DMatrix::from_fn(v * v, o, |fe, i| x[(i * v + fe % v, m * v + fe / v)])
+}
+
+/// Adds Σ_bc (ic|ab) t_kl^cb to the coupling of orbital i and returns it, a down the rows.
+fn add_ladder_coupling(
+    three: &DMatrix<f64>,
+    pairs: &DMatrix<f64>,
+    i: usize,
+    shape: Shape,
+    coupling: &mut DMatrix<f64>,
+) -> DMatrix<f64> {
+    let Shape { o, v } = shape;
+    let mut ladder = DMatrix::zeros(v, o * o);
+    let turned = slice(three.as_slice(), v * v);
+    gemm(
+        view_mut(&mut ladder),
+        false,
+        1.0,
+        turned.transpose(),
+        view(pairs),
+    );
+    for (x, l) in coupling.column_mut(i).iter_mut().zip(ladder.iter()) {
+        *x += l;
+    }
+    ladder
 }
 
 /// The second-order coupling's terms with three occupied orbitals in the integral.

@@ -17,9 +17,9 @@ pub mod layout;
 pub mod operator;
 mod states;
 
-pub use effective::{Amplitudes, build};
+pub use effective::{Amplitudes, build, build_for_p3};
 pub use operator::AdcMatrix;
-pub use states::{Configuration, Options, Spectrum, State};
+pub use states::{Configuration, Options, Spectrum, State, spectroscopic};
 
 use super::fitted::FittedOrbitals;
 use super::many_body::ManyBodyError;

@@ -129,7 +129,10 @@ impl SymmetricOperator for AdcMatrix {
         );
         let mut bottom = match &self.interaction {
             None => DMatrix::zeros(pairs, count),
-            Some(interaction) => self.interacting(interaction, vectors),
+            Some(interaction) => {
+                let two = vectors.rows(o, pairs).into_owned();
+                interaction.apply(&two, self.shape)
+            }
         };
         gemm(
             slice_mut(bottom.as_mut_slice(), pairs),
@@ -153,13 +156,13 @@ impl SymmetricOperator for AdcMatrix {
     }
 }
 
-impl AdcMatrix {
+impl Interaction {
+    /// The interaction on vectors of two-hole states, without their zeroth-order energies:
     /// Σ_pq (kp|lq) z_pq,a, less the attraction (aa'|ll') of the particle to either hole, plus the
     /// exchange (la|l'a') on the spin-coupled pair.
-    fn interacting(&self, interaction: &Interaction, vectors: &DMatrix<f64>) -> DMatrix<f64> {
-        let shape = self.shape;
-        let (o, v, m, pairs) = (shape.o, shape.v, shape.ov(), shape.two_hole());
-        let (n, count) = (self.size(), vectors.ncols());
+    pub fn apply(&self, vectors: &DMatrix<f64>, shape: Shape) -> DMatrix<f64> {
+        let (v, m, pairs) = (shape.v, shape.ov(), shape.two_hole());
+        let count = vectors.ncols();
         let mut out = DMatrix::zeros(pairs, count);
         // [z | z with holes swapped], and the spin-coupled z, as matrices with (l, a) down the rows.
         let mut both = vec![0.0; 2 * pairs * count];
@@ -169,9 +172,8 @@ impl AdcMatrix {
             .par_chunks_mut(pairs)
             .zip(swapped.par_chunks_mut(pairs))
             .zip(coupled.par_chunks_mut(pairs))
-            .zip(vectors.as_slice().par_chunks(n))
-            .for_each(|(((plain, swapped), coupled), vector)| {
-                let z = &vector[o..];
+            .zip(vectors.as_slice().par_chunks(pairs))
+            .for_each(|(((plain, swapped), coupled), z)| {
                 plain.copy_from_slice(z);
                 swap_holes(z, shape, swapped);
                 coupled.copy_from_slice(z);
@@ -182,7 +184,7 @@ impl AdcMatrix {
             slice_mut(&mut attraction, m),
             false,
             -1.0,
-            view(&interaction.direct),
+            view(&self.direct),
             slice(&both, m),
         );
         let mut exchange = vec![0.0; pairs * count];
@@ -190,7 +192,7 @@ impl AdcMatrix {
             slice_mut(&mut exchange, m),
             false,
             1.0,
-            view(&interaction.exchange),
+            view(&self.exchange),
             slice(&coupled, m),
         );
         let (direct, crossed) = attraction.split_at(pairs * count);
@@ -201,7 +203,7 @@ impl AdcMatrix {
             .zip(direct.par_chunks(pairs).zip(crossed.par_chunks(pairs)))
             .for_each(|(((out, z), exchange), (direct, crossed))| {
                 let target = slice_mut(out, v);
-                let holes = view(&interaction.holes);
+                let holes = view(&self.holes);
                 matmul::matmul(target, Accum::Replace, slice(z, v), holes, 1.0, Par::Seq);
                 spin_adapt(exchange, shape);
                 let mut back = vec![0.0; pairs];

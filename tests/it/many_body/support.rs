@@ -53,26 +53,43 @@ pub struct AdcLine {
 pub struct NearExactLine {
     pub molecule: String,
     pub line: usize,
-    pub line_class: String,
     pub orbital: usize,
     pub basis: String,
     pub gf2_ev: f64,
     pub gf2_strength: f64,
     pub p3_ev: Option<f64>,
     pub p3_strength: Option<f64>,
+    pub p3plus_ev: Option<f64>,
+    pub p3plus_strength: Option<f64>,
 }
 
 /// A molecule of the reference set, with its mean field and fitted orbitals.
 pub struct Solved {
-    pub molecule: Molecule,
     pub scf: ScfResult,
+    pub pairs: FittedPairs,
     pub orbitals: FittedOrbitals,
 }
 
-/// Solves a molecule of `folder` with `scf_auxiliary` in the mean field and `auxiliary` after it.
-pub fn solve(folder: &str, name: &str, basis_name: &str, auxiliary: &str, wanted: Pairs) -> Solved {
+/// Solves a molecule of `folder`; see [`solve_molecule`].
+pub fn solve(
+    folder: &str,
+    name: &str,
+    basis_name: &str,
+    auxiliary: &str,
+    wanted: Pairs,
+) -> Solved {
     let path = data(folder).join(format!("{name}.xyz"));
     let molecule = Molecule::read(&path, 0, None).expect("a sound geometry");
+    solve_molecule(molecule, basis_name, auxiliary, wanted)
+}
+
+/// Solves a molecule with the JK set in the mean field and `auxiliary` after it; no frozen core.
+pub fn solve_molecule(
+    molecule: Molecule,
+    basis_name: &str,
+    auxiliary: &str,
+    wanted: Pairs,
+) -> Solved {
     let basis = Basis::bundled(&molecule, basis_name).expect("a bundled basis");
     let jkfit = Basis::bundled(&molecule, JKFIT).expect("a bundled basis");
     let options = ScfOptions {
@@ -85,8 +102,8 @@ pub fn solve(folder: &str, name: &str, basis_name: &str, auxiliary: &str, wanted
     let pairs = FittedPairs::new(&basis, &auxiliary).expect("fits");
     let orbitals = FittedOrbitals::new(&scf.orbitals, &pairs, 0, wanted).expect("closed shell");
     Solved {
-        molecule,
         scf,
+        pairs,
         orbitals,
     }
 }
