@@ -278,6 +278,12 @@ fn weights(entry: &Entry) -> Vec<OrbitalWeight> {
         })
         .filter(|w| w.weight >= LISTED_WEIGHT)
         .collect();
-    out.sort_by(|a, b| b.weight.total_cmp(&a.weight).then(a.index.cmp(&b.index)));
+    // Weights that are equal but for rounding keep the order of the orbitals.
+    let rounded = |w: &OrbitalWeight| (w.weight * 1e6).round();
+    out.sort_by(|a, b| {
+        rounded(b)
+            .total_cmp(&rounded(a))
+            .then(a.index.cmp(&b.index))
+    });
     out
 }

@@ -73,7 +73,7 @@ pub fn reshaped(matrix: &DMatrix<f64>, rows: usize) -> MatRef<'_, f64> {
 /// # Panics
 /// If the number of elements is not a multiple of `rows`.
 pub fn slice(values: &[f64], rows: usize) -> MatRef<'_, f64> {
-    let columns = if rows == 0 { 0 } else { values.len() / rows };
+    let columns = values.len().checked_div(rows).unwrap_or(0);
     MatRef::from_column_major_slice(values, rows, columns)
 }
 
@@ -82,7 +82,7 @@ pub fn slice(values: &[f64], rows: usize) -> MatRef<'_, f64> {
 /// # Panics
 /// If the number of elements is not a multiple of `rows`.
 pub fn slice_mut(values: &mut [f64], rows: usize) -> MatMut<'_, f64> {
-    let columns = if rows == 0 { 0 } else { values.len() / rows };
+    let columns = values.len().checked_div(rows).unwrap_or(0);
     MatMut::from_column_major_slice_mut(values, rows, columns)
 }
 

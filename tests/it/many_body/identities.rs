@@ -17,10 +17,16 @@ fn complete_diagonalisation_gives_the_states_of_the_search() {
         for order in ORDERS {
             let (matrix, amplitudes) = adc::build(&solved.orbitals, order);
             let dense = matrix.dense();
-            assert!((&dense - dense.transpose()).amax() < 1e-12, "{name} {order:?}");
+            assert!(
+                (&dense - dense.transpose()).amax() < 1e-12,
+                "{name} {order:?}"
+            );
             let (values, vectors) = symmetric_eigen(&dense).expect("finite");
             let spectroscopic = adc::spectroscopic(&vectors, &amplitudes, matrix.shape);
-            let strengths: Vec<f64> = spectroscopic.column_iter().map(|x| x.norm_squared()).collect();
+            let strengths: Vec<f64> = spectroscopic
+                .column_iter()
+                .map(|x| x.norm_squared())
+                .collect();
             let options = Options {
                 ceiling_hartree: 1.4,
                 ..Options::default()
@@ -35,18 +41,27 @@ fn complete_diagonalisation_gives_the_states_of_the_search() {
                 assert!(state.residual_hartree <= options.residual_hartree);
                 // Within an exactly degenerate set only the sum is fixed, and every one here has
                 // equal members.
-                assert!((state.pole_strength - strengths[k]).abs() < 1e-5, "{name} {order:?}");
+                assert!(
+                    (state.pole_strength - strengths[k]).abs() < 1e-5,
+                    "{name} {order:?}"
+                );
             }
             // The states are complete: what is found in all of them is the norm of the amplitudes.
             for (p, total) in found.total_strengths.iter().enumerate() {
                 let sum: f64 = spectroscopic.row(p).iter().map(|x| x * x).sum();
                 assert!((sum - total).abs() < 1e-11);
-                assert!(*total > 0.95 && *total < 1.0, "{name} {order:?} {p}: {total}");
+                assert!(
+                    *total > 0.95 && *total < 1.0,
+                    "{name} {order:?} {p}: {total}"
+                );
             }
             // All orbitals together hold half the electrons, up to higher than second order.
             let all: f64 = strengths.iter().sum();
             let electrons = matrix.shape.o as f64;
-            assert!((all / electrons - 1.0).abs() < 0.01, "{name} {order:?}: {all}");
+            assert!(
+                (all / electrons - 1.0).abs() < 0.01,
+                "{name} {order:?}: {all}"
+            );
         }
     }
 }
@@ -83,8 +98,14 @@ fn far_molecules_do_not_matter() {
         assert_eq!(two.len(), 2 * one.len());
         for (k, state) in two.iter().enumerate() {
             let same = &one[k / 2];
-            assert!((state.ionization_hartree - same.ionization_hartree).abs() < 1e-6, "{order:?}");
-            assert!((state.pole_strength - same.pole_strength).abs() < 1e-5, "{order:?}");
+            assert!(
+                (state.ionization_hartree - same.ionization_hartree).abs() < 1e-6,
+                "{order:?}"
+            );
+            assert!(
+                (state.pole_strength - same.pole_strength).abs() < 1e-5,
+                "{order:?}"
+            );
         }
     }
 }
@@ -103,8 +124,12 @@ fn turned_molecules_have_the_same_states() {
     let turned = solve_molecule(turned, "6-31g*", JKFIT, Pairs::All).orbitals;
     for order in ORDERS {
         let options = Options::default();
-        let a = adc::run(&straight, order, &options).expect("converges").states;
-        let b = adc::run(&turned, order, &options).expect("converges").states;
+        let a = adc::run(&straight, order, &options)
+            .expect("converges")
+            .states;
+        let b = adc::run(&turned, order, &options)
+            .expect("converges")
+            .states;
         assert_eq!(a.len(), b.len());
         for (a, b) in a.iter().zip(&b) {
             assert!((a.ionization_hartree - b.ionization_hartree).abs() < 1e-8);

@@ -71,13 +71,7 @@ pub struct Solved {
 }
 
 /// Solves a molecule of `folder`; see [`solve_molecule`].
-pub fn solve(
-    folder: &str,
-    name: &str,
-    basis_name: &str,
-    auxiliary: &str,
-    wanted: Pairs,
-) -> Solved {
+pub fn solve(folder: &str, name: &str, basis_name: &str, auxiliary: &str, wanted: Pairs) -> Solved {
     let path = data(folder).join(format!("{name}.xyz"));
     let molecule = Molecule::read(&path, 0, None).expect("a sound geometry");
     solve_molecule(molecule, basis_name, auxiliary, wanted)
