@@ -10,7 +10,7 @@
 //! coupling, W the second-order coupling, and U_n = −Σ_m C_nm V_m/(ω + d_m) with the first-order
 //! interaction C of the two-hole states. In P3+ the W term is divided by 1 + Y(ω), Y being minus its
 //! ratio to the V² term. Against near-exact values both are off by 0.23 eV on average in the outer
-//! valence region (`docs/accuracy.md`); in the inner valence region they mean nothing, since one
+//! valence region (one published set of 39 lines); in the inner valence region they mean nothing, since one
 //! root per orbital is sought near the poles of Σ: such lines are told by a pole strength below
 //! [`SAFE_STRENGTH`].
 
