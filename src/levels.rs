@@ -28,6 +28,9 @@ pub struct Levels {
     pub orbitals: Vec<OrbitalLine>,
     /// Ionized states, by rising ionization energy. Members of a degenerate set are one entry.
     pub hole_states: Vec<HoleState>,
+    /// What the method could not say, a sentence each.
+    #[serde(default)]
+    pub notes: Vec<String>,
 }
 
 /// The molecule as the outputs show it.
@@ -129,6 +132,9 @@ pub struct Level {
     pub basis: String,
     /// Auxiliary basis of the density fitting.
     pub auxiliary: String,
+    /// Auxiliary basis of the correlated step; `null` where there is none.
+    #[serde(default)]
+    pub correlation_auxiliary: Option<String>,
     /// Whether core orbitals were kept out of the correlated step.
     pub frozen_core: bool,
 }

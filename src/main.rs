@@ -1,3 +1,7 @@
-//! The `bandproof` program.
+//! The `bandproof` program; see the library for everything.
 
-fn main() {}
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    bandproof::cli::run()
+}

@@ -2,9 +2,161 @@
 //!
 //! Sees only plain data: groupings of a fit and [`crate::levels::Levels`]. An assignment can be
 //! redone from two JSON files.
+//!
+//! Method: a generative model of the trace (hole states with the known error of their level, gases,
+//! lamp lines, unknown bands), whose posterior over *all* assignments is summed exactly by dynamic
+//! programming ([`chart`], [`posterior`]) and integrated over shift, scale and strength. A
+//! probability therefore compares every alternative, bands that belong to nothing included. The
+//! model with every prior and its source is `docs/assignment.md`. Valid for main lines of the
+//! valence shell; satellites of the calculation are not matched.
 
-use crate::levels::Character;
+mod chart;
+mod decode;
+mod evidence;
+mod foreign;
+mod grid;
+mod likelihood;
+mod posterior;
+mod prior;
+mod reading;
+mod remarks;
+#[cfg(test)]
+mod sample;
+#[cfg(test)]
+mod simulation;
+#[cfg(test)]
+mod small_cases;
+
+use crate::fit::Grouping;
+use crate::levels::{Character, Levels, Method};
 use serde::{Deserialize, Serialize};
+use thiserror::Error;
+
+/// Why no assignment could be made.
+#[derive(Debug, Clone, PartialEq, Error)]
+pub enum AssignError {
+    /// The fit offered no reading of the trace.
+    #[error("the fit gives no grouping of its lines into bands, so there is nothing to assign")]
+    NoGrouping,
+    /// The window is empty or not finite.
+    #[error("the window {low} to {high} eV is not a range of ionization energies")]
+    Window {
+        /// Lower end, eV.
+        low: f64,
+        /// Upper end, eV.
+        high: f64,
+    },
+    /// A number of the conditions is out of range.
+    #[error("{name} is {value}; expected {expected}")]
+    Condition {
+        /// Which.
+        name: &'static str,
+        /// The value found.
+        value: f64,
+        /// What it should be.
+        expected: &'static str,
+    },
+    /// A grouping's probability is not one.
+    #[error("grouping {grouping} has the probability {probability}; expected 0 to 1")]
+    Probability {
+        /// Index of the grouping.
+        grouping: usize,
+        /// The value found.
+        probability: f64,
+    },
+    /// A band holds a number that no fit can give.
+    #[error("band {band} of grouping {grouping}: {name} is {value}; expected {expected}")]
+    Band {
+        /// Index of the grouping.
+        grouping: usize,
+        /// Id of the band.
+        band: usize,
+        /// Which number.
+        name: &'static str,
+        /// The value found.
+        value: f64,
+        /// What it should be.
+        expected: &'static str,
+    },
+    /// A hole state holds a number that no calculation can give.
+    #[error(
+        "hole state '{label}' has the ionization energy {energy_ev} eV and pole strength \
+         {pole_strength}; expected a finite energy and a strength above 0 and up to 1"
+    )]
+    State {
+        /// Its label.
+        label: String,
+        /// Its energy, eV.
+        energy_ev: f64,
+        /// Its pole strength.
+        pole_strength: f64,
+    },
+    /// The method's error is not known, so nothing can be said about how far off it is.
+    #[error("no error model for the method '{method}'")]
+    NoErrorModel {
+        /// The method.
+        method: Method,
+    },
+    /// A table built into the program cannot be read.
+    #[error("built-in table {table}: {message}")]
+    Table {
+        /// Its name.
+        table: &'static str,
+        /// What is wrong.
+        message: String,
+    },
+    /// The sum over assignments left the range of numbers.
+    #[error("the sum over all assignments is {evidence}: bands or states too many or too odd")]
+    Numerical {
+        /// The sum.
+        evidence: f64,
+    },
+}
+
+/// Assigns bands to hole states.
+///
+/// Every grouping is weighed by its own probability times how well hole states, gases and lamp
+/// lines explain its bands; the most probable one is reported. Energies in eV throughout; the
+/// order of groupings' bands and of hole states does not matter.
+///
+/// # Errors
+/// [`AssignError`] for numbers that no fit, calculation or experiment can give.
+pub fn assign(
+    groupings: &[Grouping],
+    levels: &Levels,
+    conditions: &Conditions,
+) -> Result<Assignment, AssignError> {
+    reading::check(groupings, conditions)?;
+    let prior = prior::Prior::new(levels, conditions)?;
+    let chart = chart::Chart::new(&prior);
+    let surroundings = foreign::Surroundings::new(&levels.molecule.formula, conditions)?;
+    let mut readings = Vec::with_capacity(groupings.len());
+    for grouping in groupings {
+        readings.push(reading::Reading::new(
+            grouping,
+            &prior,
+            &chart,
+            &surroundings,
+        )?);
+    }
+    let scores: Vec<f64> = (groupings.iter().zip(&readings))
+        .map(|(grouping, reading)| grouping.probability * reading.posterior.evidence)
+        .collect();
+    let total: f64 = scores.iter().sum();
+    let mut best = 0;
+    for (number, score) in scores.iter().enumerate() {
+        if *score > scores[best] {
+            best = number;
+        }
+    }
+    if !(total.is_finite() && total > 0.0) {
+        return Err(AssignError::Numerical { evidence: total });
+    }
+    let mut assignment = readings[best].assignment(&prior, &chart, &surroundings, levels);
+    assignment.grouping = best;
+    assignment.grouping_probability = scores[best] / total;
+    Ok(assignment)
+}
 
 /// What is known about the experiment apart from the trace itself.
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]

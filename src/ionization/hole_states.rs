@@ -3,22 +3,27 @@
 //! Rules. A state belongs to the set of equivalent orbitals that gives it most of its pole strength.
 //! States of one set at the same energy are one entry of that degeneracy. The strongest entry of a
 //! set is its *main* line, all others are *satellites*; a main line whose pole strength is far below
-//! 1 says that the one-electron picture has failed there. Methods with one root per orbital have
-//! main lines only.
+//! 1 says that the one-electron picture has failed there. A search that ends at a ceiling may show
+//! the satellites of a set and miss its main line: unless it found half of the set's strength, it
+//! names no main line of that set and says so. Methods with one root per orbital have main lines
+//! only.
 
 use super::adc::{self, Order};
 use super::fitted::{FittedOrbitals, Pairs};
 use super::many_body::ManyBodyError;
 use super::second_order::{self, Quasiparticle};
-use super::{koopmans, orbital_label, p3};
+use super::{Portrait, by_spin, koopmans, p3};
 use crate::integrals::FittedPairs;
-use crate::levels::{Character, HoleState, LineKind, Method, OrbitalWeight, Spin};
+use crate::levels::{HoleState, LineKind, Method, OrbitalWeight};
 use crate::scf::{DEGENERACY_TOLERANCE_HARTREE, Orbitals, SpinOrbitals};
 use crate::units::{ev_to_hartree, hartree_to_ev};
 use std::ops::Range;
 
 /// Smallest weight of an orbital that is listed.
 const LISTED_WEIGHT: f64 = 0.01;
+
+/// Share of a set's strength that a search must have found before it names the main line.
+const MAIN_SHARE: f64 = 0.5;
 
 /// What is asked of a many-body method.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -64,20 +69,21 @@ struct Line {
     orbital_strengths: Vec<f64>,
 }
 
-/// The hole states of a closed shell by any of the methods. `characters` as for [`koopmans()`].
+/// The hole states of a closed shell by any of the methods. `portraits` as for [`koopmans()`].
 ///
 /// # Errors
-/// For an open shell, too little memory, eigenvectors that do not converge, or a missing character.
+/// For an open shell, too little memory, eigenvectors that do not converge, or a missing
+/// portrait or character.
 pub fn hole_states(
     method: Method,
     orbitals: &Orbitals,
     pairs: &FittedPairs,
     settings: &ManyBodySettings,
-    characters: &[Vec<Option<Character>>],
+    portraits: &[Vec<Portrait>],
 ) -> Result<ManyBodyLevels, ManyBodyError> {
     let order = match method {
         Method::Koopmans => {
-            let states = koopmans(orbitals, settings.core, characters)?;
+            let states = koopmans(orbitals, settings.core, portraits)?;
             let unresolved = Vec::new();
             return Ok(ManyBodyLevels { states, unresolved });
         }
@@ -89,10 +95,7 @@ pub fn hole_states(
     let Orbitals::Restricted(set) = orbitals else {
         return Err(ManyBodyError::OpenShell);
     };
-    let [characters] = characters else {
-        let (found, expected) = (characters.len(), 1);
-        return Err(super::IonizationError::CharacterLists { found, expected }.into());
-    };
+    let portraits = by_spin(orbitals, portraits)?[0].1;
     let frozen = if settings.frozen_core {
         settings.core
     } else {
@@ -102,12 +105,13 @@ pub fn hole_states(
         Method::SecondOrder => Pairs::WithoutVirtual,
         _ => Pairs::All,
     };
+    check_memory(method, set, pairs, frozen, wanted, settings)?;
     let fitted = FittedOrbitals::new(orbitals, pairs, frozen, wanted)?;
     let valence = settings.core.saturating_sub(frozen)..fitted.occupied();
     let mut unresolved = Vec::new();
     let lines = match (method, order) {
         (_, Some(order)) => adc_lines(&fitted, order, settings)?,
-        (Method::P3, _) => p3_lines(&fitted, valence, settings, &mut unresolved)?,
+        (Method::P3, _) => p3_lines(&fitted, valence, settings, portraits, &mut unresolved)?,
         _ => valence
             .map(|p| {
                 let poles = second_order::self_energy(&fitted, p);
@@ -116,8 +120,46 @@ pub fn hole_states(
             })
             .collect(),
     };
-    let states = merged(set, settings.core, lines, characters)?;
+    let ceiling_ev = order.map(|_| settings.ceiling_ev);
+    let sets = valence_sets(set, settings.core);
+    let states = merged(set, &sets, lines, portraits, ceiling_ev, &mut unresolved)?;
     Ok(ManyBodyLevels { states, unresolved })
+}
+
+/// Refuses fitted pairs of orbitals that alone would not fit.
+fn check_memory(
+    method: Method,
+    set: &SpinOrbitals,
+    pairs: &FittedPairs,
+    frozen: usize,
+    wanted: Pairs,
+    settings: &ManyBodySettings,
+) -> Result<(), ManyBodyError> {
+    let occupied = set.occupied().saturating_sub(frozen);
+    let virtuals = set.energies.len() - set.occupied();
+    let auxiliaries = pairs.auxiliaries();
+    let needed_bytes = FittedOrbitals::bytes(occupied, virtuals, auxiliaries, wanted);
+    let limit_bytes = settings.memory_limit_bytes;
+    if needed_bytes > limit_bytes {
+        return Err(ManyBodyError::Memory {
+            method: method.name(),
+            needed_bytes,
+            limit_bytes,
+            occupied,
+            virtuals,
+            auxiliaries,
+        });
+    }
+    Ok(())
+}
+
+/// Sets of equivalent occupied valence orbitals.
+fn valence_sets(set: &SpinOrbitals, core: usize) -> Vec<Range<usize>> {
+    let occupied = set.occupied();
+    (set.degenerate_sets().into_iter())
+        .map(|s| s.start.max(core)..s.end.min(occupied))
+        .filter(|s| !s.is_empty())
+        .collect()
 }
 
 fn single(root: Quasiparticle) -> Line {
@@ -154,6 +196,7 @@ fn p3_lines(
     fitted: &FittedOrbitals,
     valence: Range<usize>,
     settings: &ManyBodySettings,
+    portraits: &[Portrait],
     unresolved: &mut Vec<String>,
 ) -> Result<Vec<Line>, ManyBodyError> {
     p3::check_memory(fitted, settings.memory_limit_bytes)?;
@@ -161,12 +204,18 @@ fn p3_lines(
     for found in p3::lines(fitted, valence) {
         match found.safe() {
             Some(root) => lines.push(single(root)),
-            None => unresolved.push(format!(
-                "{} (Koopmans {:.2} eV): no P3 root with a pole strength between {} and 1; the one-electron picture does not hold there, take an ADC level",
-                orbital_label(found.orbital, Spin::Both),
-                hartree_to_ev(found.koopmans_hartree),
-                p3::SAFE_STRENGTH
-            )),
+            None => {
+                let note = format!(
+                    "{} (Koopmans {:.2} eV): no P3 root with a pole strength between {} and 1; the one-electron picture does not hold there, take an ADC level.",
+                    portraits[found.orbital].label,
+                    hartree_to_ev(found.koopmans_hartree),
+                    p3::SAFE_STRENGTH
+                );
+                // Members of a degenerate set say the same.
+                if !unresolved.contains(&note) {
+                    unresolved.push(note);
+                }
+            }
         }
     }
     Ok(lines)
@@ -190,20 +239,19 @@ impl Entry {
     }
 }
 
-/// Merges equivalent lines and names them.
+/// Merges equivalent lines and names them. Below a ceiling, `unresolved` gets a sentence for every
+/// set whose main line was not found.
 fn merged(
     set: &SpinOrbitals,
-    core: usize,
+    sets: &[Range<usize>],
     mut lines: Vec<Line>,
-    characters: &[Option<Character>],
+    portraits: &[Portrait],
+    ceiling_ev: Option<f64>,
+    unresolved: &mut Vec<String>,
 ) -> Result<Vec<HoleState>, ManyBodyError> {
-    let occupied = set.occupied();
-    let sets: Vec<Range<usize>> = set
-        .degenerate_sets()
-        .into_iter()
-        .map(|s| s.start.max(core)..s.end.min(occupied))
-        .filter(|s| !s.is_empty())
-        .collect();
+    let koopmans = |members: &Range<usize>| {
+        hartree_to_ev(-set.energies.rows(members.start, members.len()).mean())
+    };
     lines.sort_by(|a, b| a.ionization_hartree.total_cmp(&b.ionization_hartree));
     let mut entries: Vec<Entry> = Vec::new();
     for line in lines {
@@ -231,24 +279,39 @@ fn merged(
             }),
         }
     }
+    let missed: Vec<bool> = (sets.iter().enumerate())
+        .map(|(number, members)| {
+            let own = entries.iter().filter(|e| e.set == number);
+            let strengths = own.flat_map(|e| &e.lines).map(|l| l.pole_strength);
+            let found = strengths.sum::<f64>() / members.len() as f64;
+            ceiling_ev.is_some() && found < MAIN_SHARE
+        })
+        .collect();
+    for (members, _) in sets.iter().zip(&missed).filter(|(_, missed)| **missed) {
+        unresolved.push(format!(
+            "{} (Koopmans {:.2} eV): no main line was found below {:.0} eV, where the search ended.",
+            portraits[members.start].label,
+            koopmans(members),
+            ceiling_ev.unwrap_or_default(),
+        ));
+    }
     let mut states = Vec::with_capacity(entries.len());
     for entry in &entries {
         let own = entries.iter().filter(|e| e.set == entry.set);
         let strongest = own.map(Entry::strength).fold(0.0, f64::max);
         let members = sets[entry.set].clone();
-        let label = orbital_label(members.start, Spin::Both);
-        let character = characters.get(members.start).and_then(Clone::clone);
-        let character = character.ok_or_else(|| super::IonizationError::NoCharacter {
-            label: label.clone(),
-        })?;
-        let koopmans = -set.energies.rows(members.start, members.len()).mean();
+        let portrait = &portraits[members.start];
+        let label = portrait.label.clone();
+        let Some(character) = portrait.character.clone() else {
+            return Err(super::IonizationError::NoCharacter { label }.into());
+        };
         states.push(HoleState {
             label,
             ionization_energy_ev: hartree_to_ev(entry.energy()),
-            koopmans_ev: hartree_to_ev(koopmans),
+            koopmans_ev: koopmans(&members),
             pole_strength: entry.strength(),
             degeneracy: entry.lines.len(),
-            kind: if entry.strength() >= strongest {
+            kind: if entry.strength() >= strongest && !missed[entry.set] {
                 LineKind::Main
             } else {
                 LineKind::Satellite

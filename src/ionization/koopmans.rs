@@ -7,14 +7,14 @@
 //! wrong order (the textbook case is nitrogen, 3σg and 1πu). Inner-valence bands are worse and may
 //! break up into many lines, which this level cannot show.
 
-use super::{IonizationError, orbital_label};
-use crate::levels::{Character, HoleState, LineKind, OrbitalWeight};
+use super::{IonizationError, Portrait, by_spin, spin_label};
+use crate::levels::{HoleState, LineKind, OrbitalWeight};
 use crate::scf::Orbitals;
 use crate::units::hartree_to_ev;
 
 /// One hole state per set of equivalent occupied valence orbitals, by rising ionization energy.
 ///
-/// `core` lowest orbitals are left out. `characters` holds one list per spin, in the order of
+/// `core` lowest orbitals are left out. `portraits` holds one list per spin, in the order of
 /// [`Orbitals::by_spin`], with one entry per orbital. Members of a degenerate set become one state
 /// at their mean energy, with equal weights; its label is that of the lowest-numbered member. The
 /// pole strength is 1 for each member, by construction of the level. For unrestricted orbitals
@@ -22,28 +22,21 @@ use crate::units::hartree_to_ev;
 pub fn koopmans(
     orbitals: &Orbitals,
     core: usize,
-    characters: &[Vec<Option<Character>>],
+    portraits: &[Vec<Portrait>],
 ) -> Result<Vec<HoleState>, IonizationError> {
     let mut states = Vec::new();
-    let spins = orbitals.by_spin();
-    if characters.len() != spins.len() {
-        let (found, expected) = (characters.len(), spins.len());
-        return Err(IonizationError::CharacterLists { found, expected });
-    }
-    for ((spin, set), characters) in spins.into_iter().zip(characters) {
+    for ((spin, set), portraits) in by_spin(orbitals, portraits)? {
         let occupied = set.occupied();
         for members in set.degenerate_sets() {
             let members = members.start.max(core)..members.end.min(occupied);
             if members.is_empty() {
                 continue;
             }
-            let label = orbital_label(members.start, spin);
-            let character = characters
-                .get(members.start)
-                .and_then(Clone::clone)
-                .ok_or_else(|| IonizationError::NoCharacter {
-                    label: label.clone(),
-                })?;
+            let portrait = &portraits[members.start];
+            let label = spin_label(portrait, spin);
+            let Some(character) = portrait.character.clone() else {
+                return Err(IonizationError::NoCharacter { label });
+            };
             let degeneracy = members.len();
             let mean = set.energies.rows(members.start, degeneracy).mean();
             let weight = 1.0 / degeneracy as f64;
@@ -69,7 +62,7 @@ pub fn koopmans(
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::levels::Verdict;
+    use crate::levels::{Character, Verdict};
     use crate::scf::SpinOrbitals;
     use nalgebra::{DMatrix, DVector};
 
@@ -82,23 +75,27 @@ mod tests {
         }
     }
 
-    fn character(words: &str) -> Option<Character> {
-        Some(Character {
-            verdict: Verdict::Nonbonding,
-            description: words.to_string(),
-            net_overlap_population: 0.0,
-            atoms: Vec::new(),
-            bonds: Vec::new(),
-        })
+    fn portrait(label: &str, known: bool) -> Portrait {
+        Portrait {
+            label: label.to_owned(),
+            character: known.then(|| Character {
+                verdict: Verdict::Nonbonding,
+                description: format!("like {label}"),
+                net_overlap_population: 0.0,
+                atoms: Vec::new(),
+                bonds: Vec::new(),
+            }),
+        }
     }
 
     #[test]
     fn degenerate_members_are_one_state_and_the_core_is_left_out() {
         let set = orbitals(&[-20.0, -1.0, -0.600_02, -0.6, -0.5, 0.2], 5, 2.0);
-        let characters: Vec<_> = (0..6).map(|i| character(&i.to_string())).collect();
-        let states = koopmans(&Orbitals::Restricted(set), 1, &[characters]).unwrap();
+        let labels = ["1a1", "2a1", "1e", "1e", "3a1", "4a1"];
+        let portraits = labels.map(|l| portrait(l, true)).to_vec();
+        let states = koopmans(&Orbitals::Restricted(set), 1, &[portraits]).unwrap();
         let labels: Vec<&str> = states.iter().map(|s| s.label.as_str()).collect();
-        assert_eq!(labels, ["orbital 5", "orbital 3", "orbital 2"]);
+        assert_eq!(labels, ["3a1", "1e", "2a1"]);
         let pair = &states[1];
         assert_eq!((pair.degeneracy, pair.pole_strength), (2, 1.0));
         assert!((pair.ionization_energy_ev - 0.600_01 * 27.211_386_245_988).abs() < 1e-9);
@@ -108,33 +105,40 @@ mod tests {
             pair.leading_orbitals.iter().map(|w| w.weight).sum::<f64>(),
             1.0
         );
-        assert_eq!(pair.character.description, "2");
+        assert_eq!(pair.character.description, "like 1e");
     }
 
     #[test]
     fn a_set_is_cut_where_the_core_ends() {
         let set = orbitals(&[-1.0, -1.0, -0.5], 3, 2.0);
-        let characters = vec![None, character("valence"), character("outer")];
-        let states = koopmans(&Orbitals::Restricted(set), 1, &[characters]).unwrap();
+        let portraits = vec![
+            portrait("core", false),
+            portrait("valence", true),
+            portrait("outer", true),
+        ];
+        let states = koopmans(&Orbitals::Restricted(set), 1, &[portraits]).unwrap();
         assert_eq!(states[1].degeneracy, 1);
-        assert_eq!(states[1].label, "orbital 2");
+        assert_eq!(states[1].label, "valence");
     }
 
     #[test]
     fn both_spins_give_states() {
         let alpha = orbitals(&[-0.9, -0.5, 0.1], 2, 1.0);
         let beta = orbitals(&[-0.8, 0.0, 0.1], 1, 1.0);
-        let characters = vec![
-            vec![character("a1"), character("a2"), None],
-            vec![character("b1"), None, None],
-        ];
+        let list = |known: [bool; 3]| {
+            let labels = ["1a1", "1b1", "2a1"];
+            (labels.iter().zip(known))
+                .map(|(label, known)| portrait(label, known))
+                .collect::<Vec<_>>()
+        };
+        let portraits = [list([true, true, false]), list([true, false, false])];
         let orbitals = Orbitals::Unrestricted { alpha, beta };
-        let states = koopmans(&orbitals, 0, &characters).unwrap();
+        let states = koopmans(&orbitals, 0, &portraits).unwrap();
         let labels: Vec<&str> = states.iter().map(|s| s.label.as_str()).collect();
-        assert_eq!(labels, ["orbital 2 α", "orbital 1 β", "orbital 1 α"]);
-        assert!(koopmans(&orbitals, 0, &characters[..1]).is_err());
-        let lacking = vec![characters[0].clone(), vec![None, None, None]];
+        assert_eq!(labels, ["1b1 α", "1a1 β", "1a1 α"]);
+        assert!(koopmans(&orbitals, 0, &portraits[..1]).is_err());
+        let lacking = [list([true, true, false]), list([false; 3])];
         let error = koopmans(&orbitals, 0, &lacking).unwrap_err().to_string();
-        assert!(error.contains("orbital 1 β"), "{error}");
+        assert!(error.contains("1a1 β"), "{error}");
     }
 }

@@ -56,3 +56,13 @@ pub enum ManyBodyError {
     #[error(transparent)]
     Linalg(#[from] LinalgError),
 }
+
+impl ManyBodyError {
+    /// Whether an iteration ended before it converged.
+    pub fn is_not_converged(&self) -> bool {
+        matches!(
+            self,
+            ManyBodyError::Davidson(DavidsonError::NotConverged { .. })
+        )
+    }
+}

@@ -18,7 +18,7 @@ pub use koopmans::koopmans;
 pub use many_body::ManyBodyError;
 
 use crate::levels::{Character, OrbitalLine, Spin};
-use crate::scf::Orbitals;
+use crate::scf::{Orbitals, SpinOrbitals};
 use crate::units::hartree_to_ev;
 use thiserror::Error;
 
@@ -32,61 +32,100 @@ pub enum IonizationError {
         /// The orbital's label.
         label: String,
     },
-    /// Not one list of characters per spin.
-    #[error("found {found} list(s) of characters; expected {expected}, one per spin")]
-    CharacterLists {
-        /// Lists given.
-        found: usize,
-        /// Lists needed.
-        expected: usize,
+    /// Not one portrait per orbital of each spin.
+    #[error("found {found:?} portraits of orbitals, expected {expected:?}, by spin")]
+    Portraits {
+        /// Portraits given, by spin.
+        found: Vec<usize>,
+        /// Orbitals, by spin.
+        expected: Vec<usize>,
     },
 }
 
-/// Name of an orbital without symmetry: `orbital N` from 1, with its spin where the spins differ.
-pub fn orbital_label(index: usize, spin: Spin) -> String {
+/// What is known of one orbital beside its energy.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Portrait {
+    /// Its name, for example `2b1`; members of a degenerate set share it.
+    pub label: String,
+    /// Its character; `None` for core and empty orbitals.
+    pub character: Option<Character>,
+}
+
+/// The orbital's name with its spin where the spins differ.
+fn spin_label(portrait: &Portrait, spin: Spin) -> String {
+    let label = &portrait.label;
     match spin {
-        Spin::Both => format!("orbital {}", index + 1),
-        Spin::Alpha => format!("orbital {} α", index + 1),
-        Spin::Beta => format!("orbital {} β", index + 1),
+        Spin::Both => label.clone(),
+        Spin::Alpha => format!("{label} α"),
+        Spin::Beta => format!("{label} β"),
     }
 }
 
 /// The occupied orbitals and the `empty` lowest empty ones of each spin, by rising energy.
 ///
-/// `core` lowest orbitals are marked as core. `characters` as for [`koopmans()`].
+/// `core` lowest orbitals are marked as core. `portraits` as for [`koopmans()`].
+///
+/// # Errors
+/// [`IonizationError`] where portraits are missing.
 pub fn orbital_lines(
     orbitals: &Orbitals,
     core: usize,
-    characters: &[Vec<Option<Character>>],
+    portraits: &[Vec<Portrait>],
     empty: usize,
-) -> Vec<OrbitalLine> {
+) -> Result<Vec<OrbitalLine>, IonizationError> {
     let mut lines = Vec::new();
-    for (place, (spin, set)) in orbitals.by_spin().into_iter().enumerate() {
+    for ((spin, set), portraits) in by_spin(orbitals, portraits)? {
         let shown = (set.occupied() + empty).min(set.energies.len());
         for index in 0..shown {
             let energy_hartree = set.energies[index];
-            let character = characters.get(place).and_then(|list| list.get(index));
             lines.push(OrbitalLine {
                 index,
                 spin,
-                label: orbital_label(index, spin),
+                label: spin_label(&portraits[index], spin),
                 energy_hartree,
                 energy_ev: hartree_to_ev(energy_hartree),
                 occupation: set.occupations[index],
                 core: index < core,
-                character: character.cloned().flatten(),
+                character: portraits[index].character.clone(),
             });
         }
     }
     lines.sort_by(|a, b| a.energy_hartree.total_cmp(&b.energy_hartree));
-    lines
+    Ok(lines)
+}
+
+type SpinWithPortraits<'a> = ((Spin, &'a SpinOrbitals), &'a [Portrait]);
+
+/// The orbitals of each spin beside their portraits.
+fn by_spin<'a>(
+    orbitals: &'a Orbitals,
+    portraits: &'a [Vec<Portrait>],
+) -> Result<Vec<SpinWithPortraits<'a>>, IonizationError> {
+    let spins = orbitals.by_spin();
+    let expected = spins.iter().map(|(_, set)| set.energies.len());
+    let found = portraits.iter().map(Vec::len);
+    if !expected.clone().eq(found.clone()) {
+        return Err(IonizationError::Portraits {
+            found: found.collect(),
+            expected: expected.collect(),
+        });
+    }
+    let portraits = portraits.iter().map(Vec::as_slice);
+    Ok(spins.into_iter().zip(portraits).collect())
 }
 
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::scf::SpinOrbitals;
     use nalgebra::{DMatrix, DVector};
+
+    fn named(count: usize) -> Vec<Portrait> {
+        let portrait = |i| Portrait {
+            label: format!("n{i}"),
+            character: None,
+        };
+        (0..count).map(portrait).collect()
+    }
 
     #[test]
     fn lines_hold_the_occupied_and_the_lowest_empty_orbitals() {
@@ -99,20 +138,23 @@ mod tests {
             &[-20.5, -1.2, -0.5, 0.1, 0.3, 0.4],
             &[2.0, 2.0, 2.0, 0.0, 0.0, 0.0],
         );
-        let lines = orbital_lines(&Orbitals::Restricted(both), 1, &[], 2);
+        let lines = orbital_lines(&Orbitals::Restricted(both), 1, &[named(6)], 2).unwrap();
         assert_eq!(lines.len(), 5);
         assert!(lines[0].core && !lines[1].core);
-        assert_eq!(lines[4].label, "orbital 5");
+        assert_eq!(lines[4].label, "n4");
         assert_eq!((lines[2].occupation, lines[3].occupation), (2.0, 0.0));
         assert!((lines[1].energy_ev + 1.2 * 27.211_386_245_988).abs() < 1e-12);
 
         let alpha = set(&[-0.9, -0.5], &[1.0, 1.0]);
         let beta = set(&[-0.8, 0.0], &[1.0, 0.0]);
-        let lines = orbital_lines(&Orbitals::Unrestricted { alpha, beta }, 0, &[], 5);
+        let lines = orbital_lines(
+            &Orbitals::Unrestricted { alpha, beta },
+            0,
+            &[named(2), named(2)],
+            5,
+        )
+        .unwrap();
         let labels: Vec<&str> = lines.iter().map(|l| l.label.as_str()).collect();
-        assert_eq!(
-            labels,
-            ["orbital 1 α", "orbital 1 β", "orbital 2 α", "orbital 2 β"]
-        );
+        assert_eq!(labels, ["n0 α", "n0 β", "n1 α", "n1 β"]);
     }
 }

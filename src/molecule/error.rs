@@ -21,9 +21,7 @@ pub enum GeometryError {
         reason: String,
     },
     /// The bytes are not UTF-8.
-    #[error(
-        "{file}, line {line}: found bytes that are not UTF-8 text; expected a plain-text XYZ file"
-    )]
+    #[error("{file}:{line}: found bytes that are not UTF-8 text; expected a plain-text XYZ file")]
     NotText {
         /// File as the user gave it.
         file: String,
@@ -40,7 +38,7 @@ pub enum GeometryError {
     },
     /// The first line is not a positive whole number.
     #[error(
-        "{file}, line {line}: found '{found}'; expected the number of atoms, a whole number of at least 1"
+        "{file}:{line}: found '{found}'; expected the number of atoms, a whole number of at least 1"
     )]
     BadCount {
         /// File as the user gave it.
@@ -52,7 +50,7 @@ pub enum GeometryError {
     },
     /// The file ends before the promised number of atoms.
     #[error(
-        "{file}, line {line}: the file ends after {found} atom(s); line {count_line} promises {expected}"
+        "{file}:{line}: the file ends after {found} atom(s); line {count_line} promises {expected}"
     )]
     TooFewAtoms {
         /// File as the user gave it.
@@ -68,7 +66,7 @@ pub enum GeometryError {
     },
     /// There is more after the promised number of atoms.
     #[error(
-        "{file}, line {line}: found '{found}' after the {expected} atom(s) that line {count_line} promises; expected the end of the file (one geometry per file)"
+        "{file}:{line}: found '{found}' after the {expected} atom(s) that line {count_line} promises; expected the end of the file (one geometry per file)"
     )]
     TooManyAtoms {
         /// File as the user gave it.
@@ -83,9 +81,7 @@ pub enum GeometryError {
         expected: usize,
     },
     /// An atom line with fewer or more than four columns.
-    #[error(
-        "{file}, line {line}: found {found} column(s) in '{text}'; expected 4: element, x, y, z (Å)"
-    )]
+    #[error("{file}:{line}: found {found} column(s) in '{text}'; expected 4: element, x, y, z (Å)")]
     WrongColumns {
         /// File as the user gave it.
         file: String,
@@ -97,7 +93,7 @@ pub enum GeometryError {
         text: String,
     },
     /// Neither a symbol nor an atomic number.
-    #[error("{file}, line {line}: found '{found}'; expected an element symbol or atomic number")]
+    #[error("{file}:{line}: found '{found}'; expected an element symbol or atomic number")]
     UnknownElement {
         /// File as the user gave it.
         file: String,
@@ -108,7 +104,7 @@ pub enum GeometryError {
     },
     /// An element past krypton.
     #[error(
-        "{file}, line {line}: found {symbol} (element {number}); expected an element from H to Kr, the last with bundled basis sets"
+        "{file}:{line}: found {symbol} (element {number}); expected an element from H to Kr, the last with bundled basis sets"
     )]
     UnsupportedElement {
         /// File as the user gave it.
@@ -121,7 +117,7 @@ pub enum GeometryError {
         number: u8,
     },
     /// A coordinate that is not a number.
-    #[error("{file}, line {line}: found '{found}' for {axis}; expected a number in Å{hint}")]
+    #[error("{file}:{line}: found '{found}' for {axis}; expected a number in Å{hint}")]
     NotANumber {
         /// File as the user gave it.
         file: String,
@@ -136,7 +132,7 @@ pub enum GeometryError {
     },
     /// A coordinate that is NaN, infinite or absurdly large.
     #[error(
-        "{file}, line {line}: found '{found}' for {axis}; expected a finite number within ±{FARTHEST_ANGSTROM} Å"
+        "{file}:{line}: found '{found}' for {axis}; expected a finite number within ±{FARTHEST_ANGSTROM} Å"
     )]
     OutOfRange {
         /// File as the user gave it.
@@ -150,7 +146,7 @@ pub enum GeometryError {
     },
     /// Two atoms on top of each other.
     #[error(
-        "{file}, line {line}: this atom is {distance_angstrom:.3} Å from the one on line {other_line}; expected at least {CLOSEST_ANGSTROM} Å"
+        "{file}:{line}: this atom is {distance_angstrom:.3} Å from the one on line {other_line}; expected at least {CLOSEST_ANGSTROM} Å"
     )]
     TooClose {
         /// File as the user gave it.

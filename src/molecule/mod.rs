@@ -7,6 +7,7 @@
 mod elements;
 mod error;
 mod geometry;
+pub mod symmetry;
 mod xyz;
 
 pub use elements::{

@@ -354,7 +354,7 @@ mod tests {
         for (text, line, words) in located {
             let message = message(text);
             assert!(
-                message.starts_with(&format!("m.xyz, line {line}: ")),
+                message.starts_with(&format!("m.xyz:{line}: ")),
                 "{text:?}: {message}"
             );
             assert!(message.contains(words), "{text:?}: {message}");
@@ -403,7 +403,7 @@ mod tests {
         let binary = folder.path().join("bad.xyz");
         std::fs::write(&binary, b"1\n\nH 0 0 \xff\n").unwrap();
         let error = Molecule::read(&binary, 0, None).unwrap_err().to_string();
-        assert!(error.contains("bad.xyz, line 3: found bytes"), "{error}");
+        assert!(error.contains("bad.xyz:3: found bytes"), "{error}");
         let good = folder.path().join("argon.xyz");
         std::fs::write(&good, "1\n\nAr 0 0 0\n").unwrap();
         assert_eq!(Molecule::read(&good, 0, None).unwrap().name, "argon");

@@ -2,6 +2,8 @@
 
 pub mod boys;
 pub mod davidson;
+pub mod faddeeva;
 pub mod gemm;
 pub mod lanes;
 pub mod linalg;
+pub mod statistics;

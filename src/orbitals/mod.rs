@@ -10,6 +10,7 @@ pub mod bond_order;
 pub mod evidence;
 pub mod frame;
 pub mod intrinsic;
+pub mod irreps;
 pub mod verdict;
 pub mod words;
 

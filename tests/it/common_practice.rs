@@ -4,7 +4,7 @@
 
 use bandproof::basis::{Basis, default_auxiliary};
 use bandproof::integrals::overlap;
-use bandproof::ionization::{koopmans, orbital_lines};
+use bandproof::ionization::{Portrait, koopmans, orbital_lines};
 use bandproof::levels::{Character, HoleState, Verdict};
 use bandproof::molecule::Molecule;
 use bandproof::orbitals::{IntrinsicOrbitals, bond_order, characters};
@@ -49,8 +49,14 @@ fn compute(name: &str, set: &str) -> Outcome {
     let overlap = overlap(&basis);
     let characters = characters(&molecule, &basis, &overlap, &orbitals).unwrap();
     let core = molecule.core_orbital_count();
-    let states = koopmans(&result.orbitals, core, std::slice::from_ref(&characters)).unwrap();
-    let lines = orbital_lines(&result.orbitals, core, std::slice::from_ref(&characters), 2);
+    let portraits = [(characters.iter().enumerate())
+        .map(|(i, character)| Portrait {
+            label: format!("orbital {}", i + 1),
+            character: character.clone(),
+        })
+        .collect::<Vec<_>>()];
+    let states = koopmans(&result.orbitals, core, &portraits).unwrap();
+    let lines = orbital_lines(&result.orbitals, core, &portraits, 2).unwrap();
     assert_eq!(lines.len(), orbitals.occupied() + 2);
     assert!(
         lines

@@ -1,1 +1,4 @@
-//! See the head of `main.rs`.
+//! The solver against certified values, and bands against traces whose truth is known.
+
+mod nist;
+mod synthetic;

@@ -12,4 +12,5 @@ mod many_body;
 mod measured;
 mod reporting;
 mod shapes;
+mod symmetry;
 mod traces;
