@@ -28,6 +28,9 @@ pub struct Levels {
     pub orbitals: Vec<OrbitalLine>,
     /// Ionized states, by rising ionization energy. Members of a degenerate set are one entry.
     pub hole_states: Vec<HoleState>,
+    /// What the method could not say, a sentence each.
+    #[serde(default)]
+    pub notes: Vec<String>,
 }
 
 /// The molecule as the outputs show it.
@@ -66,16 +69,38 @@ pub struct AtomLine {
 pub enum Method {
     /// Koopmans: I = −ε (T. Koopmans, Physica 1, 104, 1934).
     Koopmans,
+    /// Diagonal second-order Dyson self-energy.
+    SecondOrder,
+    /// Partial third-order self-energy P3, renormalised where that is safe.
+    P3,
+    /// Non-Dyson ADC(2).
+    Adc2,
+    /// Non-Dyson ADC(2)-x.
+    Adc2x,
+    /// Non-Dyson ADC(3).
+    Adc3,
 }
 
 impl Method {
     /// All methods in rising order of cost.
-    pub const ALL: [Method; 1] = [Method::Koopmans];
+    pub const ALL: [Method; 6] = [
+        Method::Koopmans,
+        Method::SecondOrder,
+        Method::P3,
+        Method::Adc2,
+        Method::Adc2x,
+        Method::Adc3,
+    ];
 
     /// The name used on the command line and in files.
     pub fn name(self) -> &'static str {
         match self {
             Method::Koopmans => "koopmans",
+            Method::SecondOrder => "second-order",
+            Method::P3 => "p3",
+            Method::Adc2 => "adc2",
+            Method::Adc2x => "adc2x",
+            Method::Adc3 => "adc3",
         }
     }
 }
@@ -107,6 +132,9 @@ pub struct Level {
     pub basis: String,
     /// Auxiliary basis of the density fitting.
     pub auxiliary: String,
+    /// Auxiliary basis of the correlated step; `null` where there is none.
+    #[serde(default)]
+    pub correlation_auxiliary: Option<String>,
     /// Whether core orbitals were kept out of the correlated step.
     pub frozen_core: bool,
 }

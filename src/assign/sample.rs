@@ -43,6 +43,7 @@ pub(super) fn levels(hole_states: Vec<HoleState>) -> Levels {
             method: Method::Koopmans,
             basis: "def2-tzvp".to_string(),
             auxiliary: "def2-universal-jkfit".to_string(),
+            correlation_auxiliary: None,
             frozen_core: false,
         },
         scf: ScfSummary {
@@ -54,6 +55,7 @@ pub(super) fn levels(hole_states: Vec<HoleState>) -> Levels {
         },
         orbitals: Vec::new(),
         hole_states,
+        notes: Vec::new(),
     }
 }
 

@@ -51,7 +51,8 @@ pub enum Command {
 /// How to compute.
 #[derive(Debug, Args)]
 pub struct ComputeArguments {
-    /// Method and basis [default: koopmans/def2-tzvp]
+    /// Method and basis [default: koopmans/def2-tzvp]; methods: koopmans, second-order, p3, adc2,
+    /// adc2x, adc3
     #[arg(long, value_name = "METHOD/BASIS")]
     pub level: Option<LevelName>,
     /// Total charge of the molecule [default: 0]
@@ -63,6 +64,9 @@ pub struct ComputeArguments {
     /// Auxiliary set of the density fitting [default: the one that belongs to the basis]
     #[arg(long, value_name = "NAME")]
     pub auxiliary: Option<String>,
+    /// Correlate the core electrons too (methods beyond koopmans)
+    #[arg(long)]
+    pub all_electrons: bool,
 }
 
 /// How to read a trace.
@@ -136,6 +140,7 @@ pub struct AssignArguments {
 Examples:
   bandproof levels water.xyz
   bandproof levels water.xyz --level koopmans/cc-pvtz --json > water.json
+  bandproof levels nitrogen.xyz --level p3/def2-tzvp
 
 An ionization energy by Koopmans' rule is usually 0.5 to 1.5 eV too high, and the order of
 neighbours within about 1 eV can be wrong (N2 is the standing example).")]

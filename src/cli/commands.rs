@@ -186,6 +186,7 @@ fn compute_overrides(compute: &ComputeArguments) -> Vec<String> {
         compute.charge.map(|q| format!("molecule.charge = {q}")),
         (compute.multiplicity).map(|m| format!("molecule.multiplicity = {m}")),
         (compute.auxiliary.as_deref()).map(|a| format!("level.auxiliary = {}", text(a))),
+        (compute.all_electrons).then(|| "level.all_electrons = true".to_owned()),
     ]
     .into_iter()
     .flatten()

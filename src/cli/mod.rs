@@ -51,10 +51,38 @@ pub fn run() -> ExitCode {
 fn exit_code(error: &StudyError) -> u8 {
     match error {
         StudyError::Scf(ScfError::NotConverged { .. }) => NOT_CONVERGED,
+        StudyError::ManyBody(error) if error.is_not_converged() => NOT_CONVERGED,
         StudyError::Fit { error, .. } if error.is_not_converged() => NOT_CONVERGED,
         StudyError::Report(ReportError::Write { .. }) | StudyError::Unwritable { .. } => {
             NOT_WRITTEN
         }
         _ => WRONG_INPUT,
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::ionization::ManyBodyError;
+    use crate::numeric::davidson::DavidsonError;
+
+    #[test]
+    fn failures_of_the_correlated_step_have_their_exit_codes() {
+        let open = ManyBodyError::Davidson(DavidsonError::NotConverged {
+            open: 1,
+            wanted: 4,
+            iterations: 60,
+            worst: 1e-3,
+        });
+        assert_eq!(exit_code(&open.into()), NOT_CONVERGED);
+        let large = ManyBodyError::Memory {
+            method: "ADC(3)",
+            needed_bytes: 2_000_000_000,
+            limit_bytes: 1_000_000_000,
+            occupied: 20,
+            virtuals: 400,
+            auxiliaries: 1200,
+        };
+        assert_eq!(exit_code(&large.into()), WRONG_INPUT);
     }
 }

@@ -3,9 +3,19 @@
 //! [`koopmans()`] turns orbitals into [`HoleState`](crate::levels::HoleState)s; [`orbital_lines`]
 //! lists the orbitals themselves.
 
+pub mod adc;
+pub mod fitted;
+mod hole_states;
 mod koopmans;
+pub mod many_body;
+pub mod p3;
+pub mod poles;
+pub mod second_order;
 
+pub use fitted::{FittedOrbitals, Pairs};
+pub use hole_states::{ManyBodyLevels, ManyBodySettings, hole_states};
 pub use koopmans::koopmans;
+pub use many_body::ManyBodyError;
 
 use crate::levels::{Character, OrbitalLine, Spin};
 use crate::scf::{Orbitals, SpinOrbitals};

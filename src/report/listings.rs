@@ -76,20 +76,33 @@ pub fn levels_table(levels: &Levels) -> String {
         None => String::new(),
     };
     let scf = &levels.scf;
+    let level = &levels.level;
+    let mut auxiliary = level.auxiliary.clone();
+    if let Some(correlation) = &level.correlation_auxiliary {
+        let core = if level.frozen_core {
+            "core frozen"
+        } else {
+            "all electrons"
+        };
+        auxiliary += &format!("; correlated with {correlation}, {core}");
+    }
+    let notes: String = (prose::level_notes(levels).iter())
+        .map(|note| wrapped(note, LINE) + "\n")
+        .collect();
     format!(
         "{}, {}{group}, charge {}, multiplicity {}\n\
          {} (auxiliary {})\n\
-         Total energy {:.8} hartree after {}\n\n{}\n{}\n",
+         Total energy {:.8} hartree after {}\n\n{}\n{notes}{}\n",
         molecule.name,
         molecule.formula,
         molecule.charge,
         molecule.multiplicity,
-        levels.level,
-        levels.level.auxiliary,
+        level,
+        auxiliary,
         scf.energy_hartree,
         counted(scf.iterations, "iteration"),
         hole_states(levels).text(),
-        wrapped(prose::level_limits(levels.level.method), LINE),
+        wrapped(prose::level_limits(level.method), LINE),
     )
 }
 
@@ -186,7 +199,7 @@ pub(super) fn states_of<'a>(dossier: &'a Dossier, found: &'a Match) -> Vec<&'a H
             .levels
             .hole_states
             .iter()
-            .find(|s| &s.label == label)
+            .find(|s| &s.label == label && s.kind == LineKind::Main)
     };
     found.hole_states.iter().filter_map(state).collect()
 }

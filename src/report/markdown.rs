@@ -50,6 +50,10 @@ pub fn assignment_md(dossier: &Dossier) -> String {
         escaped(&dossier.levels.level.to_string())
     ));
     part(hole_states(&dossier.levels).markdown());
+    let notes = prose::level_notes(&dossier.levels);
+    if !notes.is_empty() {
+        part(bullets(notes.iter().map(|n| escaped(n))));
+    }
     part(prose::level_limits(dossier.levels.level.method).to_owned());
     part("## Trace and settings".to_owned());
     part(escaped(&prose::trace(dossier)));

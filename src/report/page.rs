@@ -91,6 +91,8 @@ pub fn page_html(dossier: &Dossier, figure: &Figure) -> String {
                 @if !notes.is_empty() { ul { @for note in notes { li { (note) } } } }
                 h2 { "Computed levels (" (dossier.levels.level) ")" }
                 (hole_states(&dossier.levels).html())
+                @let notes = prose::level_notes(&dossier.levels);
+                @if !notes.is_empty() { ul { @for note in notes { li { (note) } } } }
                 p.aside { (prose::level_limits(dossier.levels.level.method)) }
                 h2 { "Trace and settings" }
                 p { (prose::trace(dossier)) }

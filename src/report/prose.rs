@@ -1,10 +1,10 @@
 //! Sentences that several outputs share.
 
 use super::Dossier;
-use super::words::{counted, percent, signed};
+use super::words::{counted, energy, orbital, percent, signed};
 use crate::assign::RemarkKind;
 use crate::fit::{CorrelatedPair, FitStatistics};
-use crate::levels::Method;
+use crate::levels::{HoleState, Levels, LineKind, Method};
 use crate::trace::{Axis, Noise};
 
 /// What the three energies of a band are.
@@ -24,7 +24,85 @@ pub fn level_limits(method: Method) -> &'static str {
              stand in the wrong order; dinitrogen is the known example. Satellites and the \
              break-up of inner-valence lines are not described at all."
         }
+        Method::SecondOrder => {
+            "The second-order self-energy takes relaxation and correlation to lowest order. Against \
+             near-exact outer-valence energies in the same basis its values are wrong by 0.69 eV in \
+             the mean and nearly always too low, most for lone pairs on N, O and F. It gives one line \
+             per orbital; where the pole strength is below 0.85 that picture is doubtful, and \
+             satellites are not described."
+        }
+        Method::P3 => {
+            "P3 is meant for outer-valence states: against near-exact energies in the same basis its \
+             mean error is 0.23 eV, the largest 0.67 eV. It gives one line per orbital, and none where \
+             the pole strength falls below 0.8; below 0.85 the line is doubtful. Satellites and the \
+             break-up of inner-valence lines are not described."
+        }
+        Method::Adc2 => {
+            "ADC(2) gives main lines and satellites together. Main lines of the outer valence are wrong \
+             by 0.72 eV in the mean against near-exact energies in the same basis, and nearly always \
+             too low. Satellites are described to lowest order only and may be off by 2 eV and more: \
+             that strength is missing from a main line counts, where it went does not."
+        }
+        Method::Adc2x => {
+            "ADC(2)-x gives main lines and satellites together. Main lines of the outer valence are \
+             wrong by 0.73 eV in the mean against near-exact energies in the same basis, and nearly \
+             always too low. Satellites are off by about 2 eV either way: that strength is missing from \
+             a main line counts, where it went does not."
+        }
+        Method::Adc3 => {
+            "ADC(3) gives main lines and satellites together. Main lines of the outer valence are wrong \
+             by 0.28 eV in the mean against near-exact energies in the same basis; lone pairs on N, O \
+             and F come out too high by up to 0.9 eV. Satellites are off by about 2 eV either way: that \
+             strength is missing from a main line counts, where it went does not."
+        }
     }
+}
+
+/// A main line with less than this pole strength is doubtful: below it, many-body methods and
+/// experiment begin to disagree on what a line is (M. S. Deleuze, J. Phys. Chem. A 108, 9244, 2004,
+/// for outer-valence Green's functions).
+const DOUBTFUL_STRENGTH: f64 = 0.85;
+
+/// Energies closer than this are not an order, eV.
+const SAME_ENERGY_EV: f64 = 1e-6;
+
+/// What to heed in computed levels: neighbours whose order is not that of the orbitals, weak main
+/// lines, and what the method could not say.
+pub fn level_notes(levels: &Levels) -> Vec<String> {
+    let mains: Vec<&HoleState> = (levels.hole_states.iter())
+        .filter(|s| s.kind == LineKind::Main)
+        .collect();
+    let name = |state: &HoleState| orbital(&state.label).unicode();
+    let mut notes: Vec<String> = (mains.iter().zip(mains.iter().skip(1)))
+        .filter(|(first, second)| first.koopmans_ev > second.koopmans_ev + SAME_ENERGY_EV)
+        .map(|(first, second)| {
+            format!(
+                "Order changed: {} ({} eV) comes before {} ({} eV), Koopmans' rule has them the other \
+                 way round ({} and {} eV).",
+                name(first),
+                energy(first.ionization_energy_ev),
+                name(second),
+                energy(second.ionization_energy_ev),
+                energy(first.koopmans_ev),
+                energy(second.koopmans_ev),
+            )
+        })
+        .collect();
+    notes.extend(
+        (mains.iter())
+            .filter(|state| state.pole_strength < DOUBTFUL_STRENGTH)
+            .map(|state| {
+                format!(
+                    "Weak main line: {} at {} eV has a pole strength of {:.2}; below {DOUBTFUL_STRENGTH} \
+                     the picture of one electron leaving one orbital is doubtful.",
+                    name(state),
+                    energy(state.ionization_energy_ev),
+                    state.pole_strength,
+                )
+            }),
+    );
+    notes.extend(levels.notes.iter().cloned());
+    notes
 }
 
 /// Name of a kind of remark.

@@ -57,6 +57,7 @@ file = {file}
 [level]
 # level = \"koopmans/def2-tzvp\"        # METHOD/BASIS
 # auxiliary = \"def2-universal-jkfit\"
+# all_electrons = true                # correlate the core too (methods beyond koopmans)
 
 [fit]
 # resolution_ev = 0.025               # instrument's FWHM; estimated if absent

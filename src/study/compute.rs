@@ -2,8 +2,9 @@
 
 use super::settings::TheorySettings;
 use super::{Event, Observer, StudyError};
-use crate::basis::{Basis, BasisSet};
-use crate::ionization::{self, Portrait};
+use crate::basis::{self, Basis, BasisSet};
+use crate::integrals::FittedPairs;
+use crate::ionization::{self, ManyBodyLevels, ManyBodySettings, Portrait};
 use crate::levels::{AtomLine, Level, Levels, Method, MoleculeSummary, SCHEMA, ScfSummary};
 use crate::molecule::Molecule;
 use crate::molecule::symmetry::{self, PointGroup};
@@ -60,16 +61,37 @@ pub fn levels_of(
         .map(|(_, set)| portraits(molecule, &group, &basis, &overlap, set))
         .collect::<Result<Vec<_>, _>>()?;
     let core = molecule.core_orbital_count();
+    let mut level = Level {
+        method: settings.level.method,
+        basis: basis.name.clone(),
+        auxiliary: auxiliary.name.clone(),
+        correlation_auxiliary: None,
+        frozen_core: false,
+    };
+    let found = if level.method == Method::Koopmans {
+        ManyBodyLevels {
+            states: ionization::koopmans(&mean_field.orbitals, core, &portraits)?,
+            unresolved: Vec::new(),
+        }
+    } else {
+        observer(&Event::Stage("ionization energies"));
+        let fitting = correlation_auxiliary(molecule, &basis, &auxiliary)?;
+        level.frozen_core = !settings.all_electrons;
+        level.correlation_auxiliary = Some(fitting.name.clone());
+        let many_body = ManyBodySettings {
+            core,
+            frozen_core: level.frozen_core,
+            ..ManyBodySettings::default()
+        };
+        let pairs = FittedPairs::new(&basis, &fitting)?;
+        let orbitals = &mean_field.orbitals;
+        ionization::hole_states(level.method, orbitals, &pairs, &many_body, &portraits)?
+    };
     Ok(Levels {
         schema: SCHEMA.to_owned(),
         program: PROGRAM.to_owned(),
         molecule: summary(molecule, &group),
-        level: Level {
-            method: settings.level.method,
-            basis: basis.name.clone(),
-            auxiliary: auxiliary.name.clone(),
-            frozen_core: false,
-        },
+        level,
         scf: ScfSummary {
             energy_hartree: mean_field.energy_hartree,
             nuclear_repulsion_hartree: mean_field.nuclear_repulsion_hartree,
@@ -78,9 +100,21 @@ pub fn levels_of(
             dipole_debye: mean_field.dipole_debye,
         },
         orbitals: ionization::orbital_lines(&mean_field.orbitals, core, &portraits, EMPTY_SHOWN)?,
-        hole_states: match settings.level.method {
-            Method::Koopmans => ionization::koopmans(&mean_field.orbitals, core, &portraits)?,
-        },
+        hole_states: found.states,
+        notes: found.unresolved,
+    })
+}
+
+/// The auxiliary set that was made for correlated methods in this basis, where one is bundled;
+/// else that of the mean field.
+fn correlation_auxiliary(
+    molecule: &Molecule,
+    orbital: &Basis,
+    mean_field: &Basis,
+) -> Result<Basis, StudyError> {
+    Ok(match basis::correlation_auxiliary(&orbital.name) {
+        Some(name) => Basis::new(molecule, &BasisSet::auxiliary(name)?)?,
+        None => mean_field.clone(),
     })
 }
 

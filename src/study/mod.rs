@@ -14,7 +14,8 @@ pub mod simulating;
 use crate::assign::AssignError;
 use crate::basis::BasisError;
 use crate::fit::FitError;
-use crate::ionization::IonizationError;
+use crate::integrals::IntegralError;
+use crate::ionization::{IonizationError, ManyBodyError};
 use crate::lineshape::ShapeError;
 use crate::molecule::GeometryError;
 use crate::orbitals::CharacterError;
@@ -90,6 +91,12 @@ pub enum StudyError {
     /// Hole states cannot be made.
     #[error(transparent)]
     Ionization(#[from] IonizationError),
+    /// The integrals of the correlated step cannot be had.
+    #[error(transparent)]
+    Integrals(#[from] IntegralError),
+    /// The correlated step failed.
+    #[error(transparent)]
+    ManyBody(#[from] ManyBodyError),
     /// The trace is wrong.
     #[error(transparent)]
     Trace(#[from] TraceError),

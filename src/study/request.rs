@@ -89,6 +89,8 @@ pub struct LevelRequest {
     pub level: Option<LevelName>,
     /// Auxiliary set of the density fitting.
     pub auxiliary: Option<String>,
+    /// Whether methods beyond Koopmans correlate the core electrons too; no if absent.
+    pub all_electrons: Option<bool>,
 }
 
 /// Section `[fit]`.

@@ -49,6 +49,8 @@ pub struct TheorySettings {
     pub level: LevelName,
     /// Auxiliary set of the density fitting.
     pub auxiliary: String,
+    /// Whether methods beyond Koopmans correlate the core electrons too.
+    pub all_electrons: bool,
 }
 
 /// A measured file and how to read it.
@@ -127,6 +129,7 @@ impl TheorySettings {
             });
         };
         let auxiliary = level.auxiliary.clone();
+        let all_electrons = level.all_electrons.unwrap_or(false);
         let level = level.level.clone().unwrap_or_default();
         let auxiliary =
             auxiliary.unwrap_or_else(|| basis::default_auxiliary(&level.basis).to_owned());
@@ -137,6 +140,7 @@ impl TheorySettings {
             multiplicity: molecule.multiplicity,
             level,
             auxiliary,
+            all_electrons,
         })
     }
 }

@@ -27,6 +27,8 @@ pub struct SimulateSettings {
 pub struct Simulation {
     /// The computed levels.
     pub levels: Levels,
+    /// The states that are shown, one per curve of the prediction.
+    pub states: Vec<HoleState>,
     /// The predicted trace.
     pub predicted: PredictedTrace,
     /// What it was made with.
@@ -41,6 +43,7 @@ impl Simulation {
     pub fn write(&self, folder: &Path) -> Result<Vec<PathBuf>, StudyError> {
         let Self {
             levels,
+            states,
             predicted,
             instrument,
         } = self;
@@ -59,16 +62,13 @@ impl Simulation {
             title: format!("{}, {}", molecule.name, molecule.formula),
             details,
         };
-        let sticks = (predicted.states.iter()).filter_map(|curve| {
-            let state = levels.hole_states.iter().find(|s| s.label == curve.label)?;
-            Some(OverlayStick {
-                label: curve.label.clone(),
-                computed_ev: state.ionization_energy_ev,
-                shifted_ev: curve.energy_ev,
-                height: curve.weight,
-                band: None,
-                verdict: state.character.verdict,
-            })
+        let sticks = (predicted.states.iter().zip(states)).map(|(curve, state)| OverlayStick {
+            label: curve.label.clone(),
+            computed_ev: state.ionization_energy_ev,
+            shifted_ev: curve.energy_ev,
+            height: curve.weight,
+            band: None,
+            verdict: state.character.verdict,
         });
         let overlay = Overlay {
             unit: "arbitrary units".to_owned(),
@@ -134,6 +134,7 @@ pub fn run(settings: &SimulateSettings, observer: Observer) -> Result<Simulation
     Ok(Simulation {
         predicted: predict(&states, &instrument, &energies)?,
         levels,
+        states,
         instrument,
     })
 }

@@ -59,6 +59,61 @@ fn levels_follow_the_schema_in_any_number_of_threads() {
     assert_eq!(first["pole_strength"], 1.0);
 }
 
+/// Koopmans' rule puts 1πu of nitrogen first, the spectrum 3σg (15.58 and 16.93 eV; common
+/// practice).
+#[test]
+fn levels_beyond_koopmans_say_where_the_order_changed() {
+    let folder = tempfile::tempdir().unwrap();
+    let geometry = format!(
+        "{}/tests/data/many_body/geometries/N2.xyz",
+        env!("CARGO_MANIFEST_DIR")
+    );
+    for method in ["second-order", "adc3"] {
+        let level = format!("{method}/def2-svp");
+        let arguments = ["levels", &geometry, "--level", &level];
+        let text = printed(folder.path(), &arguments);
+        let one_line = text.split_whitespace().collect::<Vec<_>>().join(" ");
+        assert!(one_line.contains("Order changed: 3σg ("), "{text}");
+        assert!(one_line.contains("comes before 1πu ("), "{text}");
+        assert!(
+            one_line.contains("correlated with def2-svp-rifit, core frozen"),
+            "{text}"
+        );
+
+        let json = printed(folder.path(), &[&arguments[..], &["--json"]].concat());
+        let json: serde_json::Value = serde_json::from_str(&json).unwrap();
+        assert_eq!(json["schema"], "bandproof/levels/1");
+        assert_eq!(json["level"]["method"], method);
+        assert_eq!(json["level"]["frozen_core"], true);
+        assert_eq!(json["level"]["auxiliary"], "def2-universal-jkfit");
+        let states = json["hole_states"].as_array().unwrap();
+        let mains: Vec<&str> = (states.iter())
+            .filter(|state| state["kind"] == "main")
+            .map(|state| state["label"].as_str().unwrap())
+            .collect();
+        assert_eq!(mains[..3], ["3σg", "1πu", "2σu"], "{method}");
+        for state in states {
+            let strength = state["pole_strength"].as_f64().unwrap();
+            assert!(strength > 0.0 && strength < 1.0, "{state}");
+            assert!(state["character"]["verdict"].is_string(), "{state}");
+        }
+        // The search of ADC ends below 2σg, and says so.
+        let notes = json["notes"].as_array().unwrap();
+        assert_eq!(notes.is_empty(), method == "second-order", "{notes:?}");
+
+        let all = [&arguments[..], &["--json", "--all-electrons"]].concat();
+        let all: serde_json::Value = serde_json::from_str(&printed(folder.path(), &all)).unwrap();
+        assert_eq!(all["level"]["frozen_core"], false);
+        let first = |json: &serde_json::Value| {
+            json["hole_states"][0]["ionization_energy_ev"]
+                .as_f64()
+                .unwrap()
+        };
+        let core_effect = (first(&all) - first(&json)).abs();
+        assert!(core_effect > 1e-4 && core_effect < 0.1, "{core_effect}");
+    }
+}
+
 #[test]
 fn a_study_can_be_begun_and_run() {
     let folder = tempfile::tempdir().unwrap();

@@ -8,6 +8,7 @@ mod demo;
 mod engine;
 mod fitting;
 mod layers;
+mod many_body;
 mod measured;
 mod reporting;
 mod shapes;

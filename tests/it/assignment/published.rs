@@ -132,6 +132,7 @@ pub fn levels(molecule: &str, described: bool) -> Levels {
             method: Method::Koopmans,
             basis: "def2-tzvp".to_string(),
             auxiliary: "def2-universal-jkfit".to_string(),
+            correlation_auxiliary: None,
             frozen_core: false,
         },
         scf: ScfSummary {
@@ -143,6 +144,7 @@ pub fn levels(molecule: &str, described: bool) -> Levels {
         },
         orbitals: Vec::new(),
         hole_states,
+        notes: Vec::new(),
     }
 }
 

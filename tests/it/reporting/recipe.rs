@@ -341,6 +341,7 @@ impl Recipe {
                     method: Method::Koopmans,
                     basis: "def2-tzvp".to_owned(),
                     auxiliary: "def2-universal-jkfit".to_owned(),
+                    correlation_auxiliary: None,
                     frozen_core: false,
                 },
                 scf: ScfSummary {
@@ -361,6 +362,7 @@ impl Recipe {
                     character: None,
                 }],
                 hole_states,
+                notes: Vec::new(),
             },
             matches,
             remarks: self.remarks,
