@@ -33,7 +33,7 @@ pub fn level_limits(method: Method) -> &'static str {
         }
         Method::P3 => {
             "P3 is meant for outer-valence states: against near-exact energies in the same basis its \
-             mean error is 0.23 eV, the largest 0.67 eV. It gives one line per orbital, and none where \
+             mean absolute error is 0.23 eV, the largest 0.67 eV. It gives one line per orbital, and none where \
              the pole strength falls below 0.8; below 0.85 the line is doubtful. Satellites and the \
              break-up of inner-valence lines are not described."
         }
