@@ -33,7 +33,7 @@ pub fn level_limits(method: Method) -> &'static str {
         }
         Method::P3 => {
             "P3 is meant for outer-valence states: against near-exact energies in the same basis its \
-             mean absolute error is 0.23 eV, the largest 0.67 eV. It gives one line per orbital, and none where \
+             mean absolute error is 0.23 eV, the largest 0.48 eV. It gives one line per orbital, and none where \
              the pole strength falls below 0.8; below 0.85 the line is doubtful. Satellites and the \
              break-up of inner-valence lines are not described."
         }
@@ -93,7 +93,7 @@ pub fn level_notes(levels: &Levels) -> Vec<String> {
             .filter(|state| state.pole_strength < DOUBTFUL_STRENGTH)
             .map(|state| {
                 format!(
-                    "Weak main line: {} at {} eV has a pole strength of {:.2}; below {DOUBTFUL_STRENGTH} \
+                    "Weak main line: {} at {} eV has a pole strength of {:.3}; below {DOUBTFUL_STRENGTH} \
                      the picture of one electron leaving one orbital is doubtful.",
                     name(state),
                     energy(state.ionization_energy_ev),
